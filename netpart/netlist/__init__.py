@@ -1,0 +1,50 @@
+"""The model: netlists, rules and partitions, without any input or output."""
+
+from netpart.netlist.builder import Builder
+from netpart.netlist.errors import (
+    AssignmentError,
+    DuplicateNameError,
+    EmptyNetlistError,
+    IndexOverflowError,
+    InfeasibleError,
+    InputError,
+    LimitError,
+    NetlistError,
+    NetpartError,
+    UnknownNameError,
+    UsageError,
+    ValueRangeError,
+)
+from netpart.netlist.model import MAX_PINS, CellFlag, Direction, IgnoredNet, Netlist, Source
+from netpart.netlist.names import Names
+from netpart.netlist.partition import OBJECTIVES, Partition, spans
+from netpart.netlist.rules import FREE, AreaWindow, Rules
+
+__all__ = [
+    "FREE",
+    "MAX_PINS",
+    "OBJECTIVES",
+    "AreaWindow",
+    "AssignmentError",
+    "Builder",
+    "CellFlag",
+    "Direction",
+    "DuplicateNameError",
+    "EmptyNetlistError",
+    "IgnoredNet",
+    "IndexOverflowError",
+    "InfeasibleError",
+    "InputError",
+    "LimitError",
+    "Names",
+    "Netlist",
+    "NetlistError",
+    "NetpartError",
+    "Partition",
+    "Rules",
+    "Source",
+    "UnknownNameError",
+    "UsageError",
+    "ValueRangeError",
+    "spans",
+]
