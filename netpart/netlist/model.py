@@ -97,7 +97,7 @@ class Netlist:
     pin_directions : (p,) uint8
         Beside `net_cells`: the united `Direction` bits of all pins that the cell has on the net.
     net_pins : (m,) int32
-        Pins of the net as they stood in the file: several pins of one cell count once for the cut (above), and each here.
+        Pins of the net as they stood in the file: several pins of one cell count once above, and each here.
     cell_offsets : (n + 1,) int64 and cell_nets : (p,) int32
         The nets of cell v, ascending, are ``cell_nets[cell_offsets[v]:cell_offsets[v + 1]]``.
     type_names : Names
@@ -302,7 +302,8 @@ class Netlist:
     @property
     def areas(self) -> NDArray[np.float64]:
         """(n,) cell areas a(v)."""
-        return self.resources[0]
+        area: NDArray[np.float64] = self.resources[0]
+        return area
 
     @property
     def total_area(self) -> float:
@@ -324,7 +325,8 @@ class Netlist:
 
     def has_flag(self, flag: CellFlag) -> NDArray[np.bool_]:
         """(n,) which cells carry a flag."""
-        return (self.cell_flags & int(flag)) != 0
+        flagged: NDArray[np.bool_] = (self.cell_flags & int(flag)) != 0
+        return flagged
 
     def __repr__(self) -> str:
         name = f" {self.name}" if self.name else ""

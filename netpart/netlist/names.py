@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Iterable, Iterator, Sequence
 from typing import Any, overload
 
@@ -85,7 +86,7 @@ class Names(Sequence[str]):
     def iter_bytes(self) -> Iterator[bytes]:
         """All names as bytes, in order."""
         bounds = self.offsets.tolist()
-        for start, stop in zip(bounds[:-1], bounds[1:], strict=True):
+        for start, stop in itertools.pairwise(bounds):
             yield self.data[start:stop]
 
     def find(self, name: str | bytes) -> int:

@@ -114,10 +114,11 @@ class Partition:
             area = self.block_areas[i]
             limit, side = (window.lower[i], "below") if area < window.lower[i] else (window.upper[i], "above")
             faults.append(
-                f"block {rules.block_names[i]} has area {area:.6g}, {abs(area - limit):.6g} {side} its limit {limit:.6g}"
+                f"block {rules.block_names[i]} has area {area:.6g}, "
+                f"{abs(area - limit):.6g} {side} its limit {limit:.6g}"
             )
         if rules.fixed is not None:
-            for v in np.flatnonzero((rules.fixed != FREE) & (rules.fixed != self.blocks)):
+            for v in np.flatnonzero((rules.fixed != FREE) & (rules.fixed != self.blocks)).tolist():
                 faults.append(
                     f"cell {netlist.cell_names[v]!r} is fixed to block {rules.block_names[rules.fixed[v]]}, "
                     f"but lies in {rules.block_names[self.blocks[v]]}"
