@@ -151,7 +151,8 @@ class Rules:
             needed = area / (float(max(self.shares)) * total) - 1
             raise InfeasibleError(
                 f"cell {netlist.cell_names[largest]!r} has area {area:.6g} of {total:.6g} in all, but no block may "
-                f"hold more than {window.upper.max():.6g}; a tolerance of {math.ceil(needed * 1000) / 10:g} % would admit it"
+                f"hold more than {window.upper.max():.6g}; "
+                f"a tolerance of {math.ceil(needed * 1000) / 10:g} % would admit it"
             )
         if self.fixed is not None:
             self._check_fixed(netlist, window)

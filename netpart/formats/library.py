@@ -1,0 +1,76 @@
+"""What libraries say about cell types, from Liberty or LEF, united by type name."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field, replace
+
+from netpart.netlist import Direction
+
+__all__ = ["CellType", "ReadOptions", "unite_types"]
+
+
+@dataclass(frozen=True, slots=True)
+class CellType:
+    """A library cell.
+
+    Attributes
+    ----------
+    name : str
+    area : float or None
+        In the unit of the library (commonly square micrometres); None where the library gives none.
+    pins : mapping of pin name to Direction
+        Buses stand as single bits, ``addr[0]``.
+    sequential : bool
+        It stores state (Liberty: ff, latch, statetable or memory group).
+    macro : bool
+        A block, not a standard cell (LEF: CLASS BLOCK; Liberty: memory group or `is_macro_cell`).
+    """
+
+    name: str
+    area: float | None = None
+    pins: Mapping[str, Direction] = field(default_factory=dict)
+    sequential: bool = False
+    macro: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class ReadOptions:
+    """What the user asks of the readers.
+
+    Attributes
+    ----------
+    top : str or None
+        The top module; found where None.
+    unit_areas : bool
+        Every cell gets area 1; ports of a Verilog module 0, pads of an ISPD98 circuit 1, as the published figures do.
+    default_area : float or None
+        For cell types that no library gives an area.
+    ignore_nets : tuple of str
+        Globs of net names to leave out of the cut.
+    """
+
+    top: str | None = None
+    unit_areas: bool = False
+    default_area: float | None = None
+    ignore_nets: tuple[str, ...] = ()
+
+
+def unite_types(libraries: Iterable[Mapping[str, CellType]]) -> dict[str, CellType]:
+    """One table of cell types; the first library that gives an area or a direction wins, flags are united."""
+    types: dict[str, CellType] = {}
+    for library in libraries:
+        for name, new in library.items():
+            old = types.get(name)
+            types[name] = (
+                new
+                if old is None
+                else replace(
+                    old,
+                    area=new.area if old.area is None else old.area,
+                    pins={**new.pins, **old.pins},
+                    sequential=old.sequential or new.sequential,
+                    macro=old.macro or new.macro,
+                )
+            )
+    return types
