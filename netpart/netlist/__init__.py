@@ -18,6 +18,7 @@ from netpart.netlist.errors import (
 from netpart.netlist.model import MAX_PINS, CellFlag, Direction, IgnoredNet, Netlist, Source
 from netpart.netlist.names import Names
 from netpart.netlist.partition import OBJECTIVES, Partition, spans
+from netpart.netlist.restrict import restrict
 from netpart.netlist.rules import FREE, AreaWindow, Rules
 
 __all__ = [
@@ -46,5 +47,6 @@ __all__ = [
     "UnknownNameError",
     "UsageError",
     "ValueRangeError",
+    "restrict",
     "spans",
 ]

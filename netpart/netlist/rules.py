@@ -182,8 +182,8 @@ def _as_fraction(value: float | Fraction | str, what: str) -> Fraction:
         if isinstance(value, str):
             text = value.strip()
             return Fraction(text[:-1].strip()) / 100 if text.endswith("%") else Fraction(text)
-        return Fraction(value) if isinstance(value, int | Fraction) else Fraction(repr(float(value)))
-    except (ValueError, ZeroDivisionError):
+        return Fraction(value) if isinstance(value, int | Fraction) else Fraction(value).limit_denominator(10**9)
+    except (ValueError, ZeroDivisionError, OverflowError):
         raise UsageError(f"{what}: expected a number or a percentage, found {value!r}") from None
 
 
