@@ -52,8 +52,8 @@ def build_parser() -> argparse.ArgumentParser:
 def main(argv: Sequence[str] | None = None) -> int:
     """Run one command and return its exit code.
 
-    0: all rules met. 1: a rule is violated, or an audit found a false claim. 2: bad usage or input. 3: proved infeasible.
-    130: interrupted.
+    0: all rules met. 1: a rule is violated, or an audit found a false claim. 2: bad usage or input. 3: proved
+    infeasible. 130: interrupted.
     """
     signal.signal(signal.SIGTERM, _raise_interrupt)
     try:

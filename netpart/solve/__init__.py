@@ -1,0 +1,1 @@
+"""Putting the stages together."""
