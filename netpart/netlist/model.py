@@ -260,24 +260,28 @@ class Netlist:
         *,
         areas: NDArray[np.float64],
         net_weights: NDArray[np.float64],
+        by_cell: tuple[NDArray[np.int64], NDArray[np.int32]] | None = None,
     ) -> Netlist:
-        """A netlist of clusters, from arrays that are already in order (each cell once per net); not checked again."""
+        """A netlist of nameless clusters, from arrays that are already in order (each cell once per net); not checked.
+
+        `by_cell` is (cell_offsets, cell_nets) where the caller has them.
+        """
         num_cells, num_nets = len(areas), len(net_weights)
-        cell_offsets, cell_nets = transpose(net_offsets, net_cells, num_cells)
+        cell_offsets, cell_nets = by_cell if by_cell is not None else transpose(net_offsets, net_cells, num_cells)
         return cls(
             name="",
             cell_names=Names.blank(num_cells),
-            cell_types=np.zeros(num_cells, np.int32),
+            cell_types=np.broadcast_to(np.int32(0), num_cells),
             resources=areas.reshape(1, -1),
-            cell_flags=np.zeros(num_cells, np.uint8),
-            cell_modules=np.zeros(num_cells, np.int32),
+            cell_flags=np.broadcast_to(np.uint8(0), num_cells),
+            cell_modules=np.broadcast_to(np.int32(0), num_cells),
             module_names=Names.blank(1),
             module_parents=np.full(1, -1, np.int32),
             net_names=Names.blank(num_nets),
             net_weights=net_weights,
             net_offsets=net_offsets,
             net_cells=net_cells,
-            pin_directions=np.zeros(len(net_cells), np.uint8),
+            pin_directions=np.broadcast_to(np.uint8(0), len(net_cells)),
             net_pins=np.diff(net_offsets).astype(np.int32),
             cell_offsets=cell_offsets,
             cell_nets=cell_nets,

@@ -56,8 +56,8 @@ class Names(Sequence[str]):
 
     @classmethod
     def blank(cls, count: int) -> Names:
-        """`count` empty names, for clusters that have none; takes 8 bytes a name."""
-        return cls(b"", np.zeros(count + 1, dtype=np.int64))
+        """`count` empty names, for clusters that have none; takes no memory."""
+        return cls(b"", np.broadcast_to(np.int64(0), count + 1))
 
     def __len__(self) -> int:
         return len(self.offsets) - 1
