@@ -2,12 +2,18 @@
 
 from __future__ import annotations
 
+import fnmatch
+import re
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, replace
+from typing import NamedTuple
 
-from netpart.netlist import Direction
+import numpy as np
+from numpy.typing import NDArray
 
-__all__ = ["CellType", "ReadOptions", "unite_types"]
+from netpart.netlist import Direction, IgnoredNet, Names
+
+__all__ = ["CellType", "IgnoredByName", "ReadOptions", "ignored_by_name", "unite_types"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -74,3 +80,21 @@ def unite_types(libraries: Iterable[Mapping[str, CellType]]) -> dict[str, CellTy
                 )
             )
     return types
+
+
+class IgnoredByName(NamedTuple):
+    """Nets that the user wants left out: which ones, and what a report says of them."""
+
+    mask: NDArray[np.bool_]
+    nets: tuple[IgnoredNet, ...]
+
+
+def ignored_by_name(names: Names | list[str], pins: NDArray[np.int64], options: ReadOptions) -> IgnoredByName:
+    """The nets whose name matches one of the globs in `options`; upper and lower case differ."""
+    mask = np.zeros(len(names), np.bool_)
+    if not options.ignore_nets:
+        return IgnoredByName(mask, ())
+    pattern = re.compile("|".join(fnmatch.translate(glob) for glob in options.ignore_nets))
+    found = [i for i, name in enumerate(names) if pattern.match(name)]
+    mask[found] = True
+    return IgnoredByName(mask, tuple(IgnoredNet(names[i], "ignored on request", int(pins[i])) for i in found))

@@ -24,7 +24,7 @@ _CHUNK = 1 << 20
 _CODECS: tuple[tuple[bytes, str, Callable[[BinaryIO], BinaryIO]], ...] = (
     (b"\x1f\x8b", "gzip", lambda raw: cast(BinaryIO, gzip.GzipFile(fileobj=raw))),
     (b"BZh", "bzip2", lambda raw: cast(BinaryIO, bz2.BZ2File(raw))),
-    (b"\xfd7zXZ\x00", "xz", lambda raw: cast(BinaryIO, lzma.LZMAFile(raw))),
+    (b"\xfd7zXZ\x00", "xz", lambda raw: cast(BinaryIO, lzma.open(raw))),
 )
 
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from enum import IntFlag
 from typing import NamedTuple
 
@@ -287,6 +287,10 @@ class Netlist:
             cell_nets=cell_nets,
             type_names=Names.blank(1),
         )
+
+    def with_sources(self, sources: tuple[Source, ...]) -> Netlist:
+        """The same netlist, read from these files."""
+        return replace(self, sources=sources)
 
     @property
     def num_cells(self) -> int:
