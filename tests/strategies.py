@@ -23,9 +23,7 @@ def netlists(
     """Small netlists; `areas` is unit, whole or any (decimals too), `weights` is unit, whole or any."""
     num_cells = draw(st.integers(min_cells, max_cells))
     nets = draw(
-        st.lists(
-            st.lists(st.integers(0, num_cells - 1), min_size=0, max_size=max_net_size), min_size=0, max_size=max_nets
-        )
+        st.lists(st.lists(st.integers(0, num_cells - 1), min_size=0, max_size=max_net_size), min_size=0, max_size=max_nets)
     )
     return make_netlist(
         nets,

@@ -57,9 +57,7 @@ def add_input_options(parser: argparse.ArgumentParser) -> None:
     )
     add_option(group, "--top", metavar="NAME", help="the top module, where it is not the only one nobody instantiates")
     group.add_argument("--unit-areas", action="store_true", help="every cell counts 1, whatever the library says")
-    add_option(
-        group, "--default-area", kind=_area, metavar="AREA", help="the area of cell types that no library describes"
-    )
+    add_option(group, "--default-area", kind=_area, metavar="AREA", help="the area of cell types that no library describes")
     group.add_argument(
         "--ignore-net", action="append", default=[], metavar="GLOB", help="leave nets of this name out of the cut"
     )
@@ -90,9 +88,7 @@ def add_engine_options(parser: argparse.ArgumentParser) -> None:
     group = parser.add_argument_group("engine")
     add_option(group, "--effort", choices=tuple(EFFORTS), help="preset of settings (default: normal)")
     add_option(group, "--settings", metavar="FILE.toml", help="settings by name; see --list-settings")
-    group.add_argument(
-        "--set", action="append", default=[], metavar="NAME=VALUE", help="one setting by name, over the file"
-    )
+    group.add_argument("--set", action="append", default=[], metavar="NAME=VALUE", help="one setting by name, over the file")
     add_option(group, "--starts", kind=_whole_from(1), metavar="N", help="independent starts, the best is kept")
     add_option(group, "--seed", kind=_whole_from(0), default=1, metavar="N", help="random seed (default: 1)")
     add_option(

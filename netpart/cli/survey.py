@@ -30,7 +30,7 @@ def run(arguments: argparse.Namespace) -> int:
         netlist = read_netlist(arguments)
     with journal.stage("count"):
         found = survey(netlist)
-    spectrum = describe_spectrum(netlist, journal)
+    _, spectrum = describe_spectrum(netlist, journal)
     if arguments.json:
         content = {
             "input": describe_input(netlist, reading_options(arguments)),

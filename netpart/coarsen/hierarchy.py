@@ -60,9 +60,7 @@ class Hierarchy:
         for number, level in enumerate(self.levels):
             netlist = level.netlist
             ratio = "" if before is None else f"{before / netlist.num_cells:.2f}"
-            lines.append(
-                f"{number:>5} {netlist.num_cells:>10,} {netlist.num_nets:>10,} {netlist.num_pins:>11,} {ratio:>6}"
-            )
+            lines.append(f"{number:>5} {netlist.num_cells:>10,} {netlist.num_nets:>10,} {netlist.num_pins:>11,} {ratio:>6}")
             before = netlist.num_cells
         return "\n".join(lines)
 

@@ -15,14 +15,17 @@ from netpart.netlist import Direction, InputError
 
 __all__ = ["looks_like_lef", "read_lef"]
 
-_TOKEN = re.compile(r'(?:\s|#[^\n]*)*+("[^"]*+"|;|[^\s;"#][^\s;"]*+)')
+_TOKEN = re.compile(r'(?:\s|#[^\n]*+)*+("[^"]*+"|[;"]|[^\s;"#][^\s;"]*+)')
+_NUMBER = re.compile(r"\+?(\d+\.?\d*|\.\d+)([eE][-+]?\d{1,2})?")
 _DIRECTIONS = {
     "INPUT": Direction.INPUT,
     "OUTPUT": Direction.OUTPUT,
     "INOUT": Direction.INOUT,
     "FEEDTHRU": Direction.INOUT,
 }
-_MACRO_CLASSES = {"BLOCK", "RING", "COVER", "PAD"}
+_CLASSES = {"COVER": True, "RING": True, "BLOCK": True, "PAD": True, "CORE": False, "ENDCAP": False}
+"""Whether a macro of the class is a block of its own (True) or a standard cell."""
+
 _OPENING = {"VERSION", "BUSBITCHARS", "DIVIDERCHAR", "NAMESCASESENSITIVE", "UNITS", "LAYER", "SITE", "MACRO"}
 _OPENING |= {"PROPERTYDEFINITIONS", "MANUFACTURINGGRID", "CLEARANCEMEASURE", "VIA"}
 _DESIGN = re.compile(rb"^\s*DESIGN\s+\S+\s*;", re.MULTILINE)
@@ -36,33 +39,45 @@ def looks_like_lef(data: bytes) -> bool:
 
 
 class _Tokens:
+    """The words of a file one by one; `next` raises where the file ends."""
+
     def __init__(self, source: SourceText) -> None:
         self.source = source
         self.text = source.data.decode("utf-8", "surrogateescape")
         self.offset = 0
         self._matches: Iterator[re.Match[str]] = _TOKEN.finditer(self.text)
 
+    def next_or_none(self) -> str | None:
+        """The next word, or None at the end of the file."""
+        match = next(self._matches, None)
+        self.offset = len(self.text) if match is None else match.start(1)
+        if match is None:
+            return None
+        if match[1] == '"':
+            raise self.error("a closing quote", "the end of the file")
+        return match[1]
+
     def next(self, expected: str) -> str:
-        """The next word; an error where the file ends."""
-        word = self.peek_end()
+        """The next word."""
+        word = self.next_or_none()
         if word is None:
-            self.offset = len(self.text)
             raise self.error(expected)
         return word
 
-    def peek_end(self) -> str | None:
-        """The next word, or None at the end of the file."""
-        match = next(self._matches, None)
-        if match is None:
-            return None
-        self.offset = match.start(1)
-        return match[1]
+    def keyword(self, expected: str) -> str:
+        """The next word in capitals, as keywords may be written either way."""
+        return self.next(expected).upper()
 
-    def skip_statement(self, first: str = "") -> None:
-        """Read on behind the next ``;``."""
-        word = first
-        while word != ";":
-            word = self.next("';'")
+    def require(self, *words: str) -> None:
+        """Read words that must stand here."""
+        for word in words:
+            if self.next(word) != word:
+                raise self.error(word)
+
+    def skip_past(self, end: str) -> None:
+        """Read on behind a word."""
+        while self.next(end) != end:
+            pass
 
     def error(self, expected: str, found: str | None = None) -> InputError:
         """An error at the last word."""
@@ -70,97 +85,79 @@ class _Tokens:
 
 
 def read_lef(source: SourceText) -> dict[str, CellType]:
-    """The macros of a LEF file by name; empty for a technology file.
+    """The macros of a LEF file by name, without their supply pins; empty for a technology file.
 
     Raises
     ------
     InputError
-        For a macro that is not ended, or a size or class that cannot be read.
+        For a macro that is not ended, or a size, class or direction that cannot be read.
     """
     tokens = _Tokens(source)
     types: dict[str, CellType] = {}
-    while (word := tokens.peek_end()) is not None:
+    while (word := tokens.next_or_none()) is not None:
         if word == "PROPERTYDEFINITIONS":
             while tokens.next("END PROPERTYDEFINITIONS") != "END":
-                tokens.skip_statement()
-            tokens.next("PROPERTYDEFINITIONS")
+                tokens.skip_past(";")
+            tokens.require("PROPERTYDEFINITIONS")
         elif word == "BEGINEXT":
-            while tokens.next("ENDEXT") != "ENDEXT":
-                pass
+            tokens.skip_past("ENDEXT")
         elif word == "MACRO":
-            cell = _read_macro(tokens)
-            if cell.name in types:
-                raise tokens.error("different macro names", f"MACRO {cell.name} again")
-            types[cell.name] = cell
+            name = tokens.next("a macro name")
+            if name in types:
+                raise tokens.error("different macro names", f"MACRO {name} again")
+            types[name] = _read_macro(tokens, name)
     return types
 
 
-def _read_macro(tokens: _Tokens) -> CellType:
-    name = tokens.next("a macro name")
+def _read_macro(tokens: _Tokens, name: str) -> CellType:
     area: float | None = None
     macro = False
     pins: dict[str, Direction] = {}
-    while True:
-        word = tokens.next(f"END {name}")
-        if word == "END":
-            if tokens.next(name) != name:
-                raise tokens.error(f"END {name}")
-            return CellType(name, area, pins, False, macro)
-        if word == "CLASS":
-            macro = tokens.next("a class") in _MACRO_CLASSES
-            tokens.skip_statement()
-        elif word == "SIZE":
-            width = _read_size(tokens)
-            if tokens.next("BY") != "BY":
-                raise tokens.error("BY")
-            area = float(width * _read_size(tokens))
-            if tokens.next("';'") != ";":
-                raise tokens.error("';'")
-        elif word == "PIN":
+    while (word := tokens.keyword(f"END {name}")) != "END":
+        if word == "PIN":
             pin, direction, is_supply = _read_pin(tokens)
             if not is_supply:
                 pins[pin] = direction
         elif word in ("OBS", "DENSITY"):
-            _skip_to_end(tokens)
-        else:
-            tokens.skip_statement(word)
+            tokens.skip_past("END")
+        elif word == "SIZE":
+            width = _read_size(tokens)
+            tokens.require("BY")
+            area = float(width * _read_size(tokens))
+            tokens.require(";")
+        elif word != ";":
+            if word == "CLASS":
+                kind = tokens.keyword("a class")
+                if kind not in _CLASSES:
+                    raise tokens.error(f"one of {', '.join(_CLASSES)}")
+                macro = _CLASSES[kind]
+            tokens.skip_past(";")
+    tokens.require(name)
+    return CellType(name, area, pins, False, macro)
 
 
 def _read_pin(tokens: _Tokens) -> tuple[str, Direction, bool]:
     name = tokens.next("a pin name")
     direction, is_supply = Direction.UNKNOWN, False
-    while True:
-        word = tokens.next(f"END {name}")
-        if word == "END":
-            if tokens.next(name) != name:
-                raise tokens.error(f"END {name}")
-            return name, direction, is_supply
-        if word == "DIRECTION":
-            value = tokens.next("a direction")
-            if value not in _DIRECTIONS:
-                raise tokens.error("INPUT, OUTPUT, INOUT or FEEDTHRU")
-            direction = _DIRECTIONS[value]
-            tokens.skip_statement()
-        elif word == "USE":
-            is_supply = tokens.next("a use") in ("POWER", "GROUND")
-            tokens.skip_statement()
-        elif word == "PORT":
-            _skip_to_end(tokens)
-        else:
-            tokens.skip_statement(word)
-
-
-def _skip_to_end(tokens: _Tokens) -> None:
-    while tokens.next("END") != "END":
-        pass
+    while (word := tokens.keyword(f"END {name}")) != "END":
+        if word == "PORT":
+            tokens.skip_past("END")
+        elif word != ";":
+            if word == "DIRECTION":
+                value = tokens.keyword("a direction")
+                if value not in _DIRECTIONS:
+                    raise tokens.error(f"one of {', '.join(_DIRECTIONS)}")
+                direction = _DIRECTIONS[value]
+            elif word == "USE":
+                is_supply = tokens.keyword("a use") in ("POWER", "GROUND")
+            tokens.skip_past(";")
+    tokens.require(name)
+    return name, direction, is_supply
 
 
 def _read_size(tokens: _Tokens) -> Fraction:
+    """A length, exactly, so that 0.324 by 0.27 is 0.08748."""
     word = tokens.next("a size")
-    try:
-        size = Fraction(word)
-    except (ValueError, ZeroDivisionError):
-        size = Fraction(-1)
-    if size < 0:
+    if not _NUMBER.fullmatch(word):
         raise tokens.error("a size from 0")
-    return size
+    return Fraction(word)

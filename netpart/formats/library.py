@@ -63,7 +63,7 @@ class ReadOptions:
 
 
 def unite_types(libraries: Iterable[Mapping[str, CellType]]) -> dict[str, CellType]:
-    """One table of cell types; the first library that gives an area or a direction wins, flags are united."""
+    """One table of cell types; the first library that gives an area or a direction wins, pins and flags are united."""
     types: dict[str, CellType] = {}
     for library in libraries:
         for name, new in library.items():
@@ -74,7 +74,7 @@ def unite_types(libraries: Iterable[Mapping[str, CellType]]) -> dict[str, CellTy
                 else replace(
                     old,
                     area=new.area if old.area is None else old.area,
-                    pins={**new.pins, **old.pins},
+                    pins={pin: old.pins.get(pin) or direction for pin, direction in {**old.pins, **new.pins}.items()},
                     sequential=old.sequential or new.sequential,
                     macro=old.macro or new.macro,
                 )

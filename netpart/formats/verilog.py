@@ -133,9 +133,7 @@ def _check_hierarchy(modules: Mapping[str, Module], top: Module) -> None:
                 totals[name] += size[child]
             elif child in open_modules:
                 cycle = [*list(open_modules)[list(open_modules).index(child) :], child]
-                raise modules[name].file.error(
-                    instance.offset, "a hierarchy without cycles", " in ".join(reversed(cycle))
-                )
+                raise modules[name].file.error(instance.offset, "a hierarchy without cycles", " in ".join(reversed(cycle)))
             else:
                 if len(stack) >= MAX_DEPTH:
                     raise modules[name].file.error(
@@ -152,9 +150,7 @@ def _check_hierarchy(modules: Mapping[str, Module], top: Module) -> None:
             if stack:
                 totals[stack[-1][0]] += size[name]
     if size[top.name] > MAX_PINS:
-        raise IndexOverflowError(
-            f"module {top.name!r} holds {size[top.name]:,} cells; at most {MAX_PINS:,} are counted"
-        )
+        raise IndexOverflowError(f"module {top.name!r} holds {size[top.name]:,} cells; at most {MAX_PINS:,} are counted")
 
 
 class _Flattener:
@@ -408,9 +404,7 @@ class _Scope:
             nets = self.vectors.get(name)
             bounds = self.module.nets[name]
             assert bounds is not None
-            number = (
-                nets[abs(index - bounds[0])] if nets is not None else self.flat.new_net(f"{self.prefix}{name}[{index}]")
-            )
+            number = nets[abs(index - bounds[0])] if nets is not None else self.flat.new_net(f"{self.prefix}{name}[{index}]")
             self.bits[key] = number
         return number
 
@@ -450,9 +444,7 @@ def _direction_of(directions: Mapping[str, int], port: str, bit: str) -> int:
     return directions.get(bit, directions.get(port, 0))
 
 
-def _freeze(
-    flat: _Flattener, types: Mapping[str, CellType], options: ReadOptions, texts: Sequence[SourceText]
-) -> Netlist:
+def _freeze(flat: _Flattener, types: Mapping[str, CellType], options: ReadOptions, texts: Sequence[SourceText]) -> Netlist:
     """Areas, ignored nets, notes: from the flattener's lists to the netlist."""
     type_names = list(dict.fromkeys(["", *flat.cell_types]))
     type_index = {name: i for i, name in enumerate(type_names)}
@@ -556,8 +548,6 @@ def _made_different(names: list[str]) -> list[str]:
 def _notes(flat: _Flattener) -> tuple[str, ...]:
     notes = []
     if flat.undeclared:
-        names = ", ".join(flat.undeclared[:3]) + (
-            f" and {len(flat.undeclared) - 3} more" if flat.undeclared[3:] else ""
-        )
+        names = ", ".join(flat.undeclared[:3]) + (f" and {len(flat.undeclared) - 3} more" if flat.undeclared[3:] else "")
         notes.append(f"nets used without a declaration (scalars by clause 4.5): {names}")
     return tuple(notes)

@@ -24,7 +24,24 @@ MAX_NESTING = 64
 IDENTIFIER = r"(?:[A-Za-z_][A-Za-z0-9_$]*|\\[^\s]+(?=\s))"
 """Clause 3.7: a simple identifier, or a backslash and everything up to white space."""
 
-GATES = frozenset(["and", "nand", "or", "nor", "xor", "xnor", "buf", "not", "bufif0", "bufif1", "notif0", "notif1", "pullup", "pulldown"])
+GATES = frozenset(
+    [
+        "and",
+        "nand",
+        "or",
+        "nor",
+        "xor",
+        "xnor",
+        "buf",
+        "not",
+        "bufif0",
+        "bufif1",
+        "notif0",
+        "notif1",
+        "pullup",
+        "pulldown",
+    ]
+)
 """Gate primitives (clause 7.1); their outputs come first."""
 
 _NET_TYPES = frozenset(["wire", "tri", "tri0", "tri1", "triand", "trior", "wand", "wor", "supply0", "supply1"])
@@ -33,7 +50,67 @@ KEYWORDS = (
     GATES
     | _NET_TYPES
     | frozenset(
-        ["always", "assign", "attribute", "begin", "case", "casex", "casez", "deassign", "default", "defparam", "disable", "edge", "else", "end", "endcase", "endfunction", "endgenerate", "endmodule", "endprimitive", "endspecify", "endtable", "endtask", "event", "for", "force", "forever", "fork", "function", "generate", "genvar", "if", "initial", "inout", "input", "integer", "join", "localparam", "macromodule", "module", "negedge", "output", "parameter", "posedge", "primitive", "real", "realtime", "reg", "release", "repeat", "scalared", "signed", "specify", "specparam", "table", "task", "time", "vectored", "wait", "while"]
+        [
+            "always",
+            "assign",
+            "attribute",
+            "begin",
+            "case",
+            "casex",
+            "casez",
+            "deassign",
+            "default",
+            "defparam",
+            "disable",
+            "edge",
+            "else",
+            "end",
+            "endcase",
+            "endfunction",
+            "endgenerate",
+            "endmodule",
+            "endprimitive",
+            "endspecify",
+            "endtable",
+            "endtask",
+            "event",
+            "for",
+            "force",
+            "forever",
+            "fork",
+            "function",
+            "generate",
+            "genvar",
+            "if",
+            "initial",
+            "inout",
+            "input",
+            "integer",
+            "join",
+            "localparam",
+            "macromodule",
+            "module",
+            "negedge",
+            "output",
+            "parameter",
+            "posedge",
+            "primitive",
+            "real",
+            "realtime",
+            "reg",
+            "release",
+            "repeat",
+            "scalared",
+            "signed",
+            "specify",
+            "specparam",
+            "table",
+            "task",
+            "time",
+            "vectored",
+            "wait",
+            "while",
+        ]
     )
 )
 """Reserved words (annex B) that may begin a statement or stand where a name is expected."""
@@ -110,9 +187,7 @@ def _take_select(tokens: pp.ParseResults) -> Any:
 _select.set_parse_action(_take_select)
 _joined = pp.Located(_sign("{") - _listed(_expression, "expressions") + _sign("}"))
 _joined.set_parse_action(lambda tokens: [("join", tuple(tokens[1][0]), tokens[0])])
-_repeated = pp.Located(
-    _sign("{") + _integer + _sign("{") - _listed(_expression, "expressions") + _sign("}") + _sign("}")
-)
+_repeated = pp.Located(_sign("{") + _integer + _sign("{") - _listed(_expression, "expressions") + _sign("}") + _sign("}"))
 
 
 def _take_repeated(text: str, loc: int, tokens: pp.ParseResults) -> Any:
@@ -156,9 +231,7 @@ def _port(tokens: Any) -> tuple[Any, ...]:
 
 _declared = pp.Group(pp.Located(_identifier) + pp.Optional(_sign("=") - _expression, default=None))
 _declaration = (
-    pp.Group(
-        (_direction + pp.Optional(_net_type, default=None)) | (pp.Empty().set_parse_action(lambda: [None]) + _net_type)
-    )
+    pp.Group((_direction + pp.Optional(_net_type, default=None)) | (pp.Empty().set_parse_action(lambda: [None]) + _net_type))
     + _signed
     + pp.Optional(_word("vectored") | _word("scalared"))
     + _maybe_range
@@ -181,9 +254,9 @@ _assign.set_parse_action(lambda tokens: [("assign", tuple((left, right) for left
 _named = pp.Group(_sign(".") - _identifier + _sign("(") + pp.Optional(_expression, default=None) + _sign(")"))
 _connections = (
     (_named + (_sign(",") - _named)[...]).set_parse_action(lambda tokens: [("named", tuple(map(tuple, tokens)))])
-    | (
-        pp.Optional(_expression, default=None) + (_sign(",") + pp.Optional(_expression, default=None))[...]
-    ).set_parse_action(lambda tokens: [("ordered", tuple(tokens) if tuple(tokens) != (None,) else ())])
+    | (pp.Optional(_expression, default=None) + (_sign(",") + pp.Optional(_expression, default=None))[...]).set_parse_action(
+        lambda tokens: [("ordered", tuple(tokens) if tuple(tokens) != (None,) else ())]
+    )
 ).set_name("connections")
 _instance = pp.Group(pp.Located(_identifier) + _maybe_range + _sign("(") - _connections + _sign(")"))
 _instances = pp.Located(_identifier) + _parameters + _listed(_instance, "instances")

@@ -64,9 +64,7 @@ class TextFile:
     source: SourceText
     text: str
 
-    def error(
-        self, offset: int, expected: str, found: str | None = None, kind: type[InputError] = InputError
-    ) -> InputError:
+    def error(self, offset: int, expected: str, found: str | None = None, kind: type[InputError] = InputError) -> InputError:
         """An error at a character of this file."""
         if found is None:
             word = self.text[offset : offset + 40].split(maxsplit=1)
@@ -80,9 +78,7 @@ _NAME = rf"(?:(?!(?:{'|'.join(sorted(KEYWORDS))})\b)[A-Za-z_][A-Za-z0-9_$]*+|\\\
 _PIN = rf"\.\s*+({IDENTIFIER})\s*+\(\s*+(?:({_NAME})\s*+(?:\[\s*+(\d++)\s*+\]\s*+)?)?\)"
 _UNGROUPED_PIN = _PIN.replace(f"({IDENTIFIER})", IDENTIFIER).replace(f"({_NAME})", _NAME).replace(r"(\d++)", r"\d++")
 _FAST_PIN = re.compile(_PIN)
-_FAST_INSTANCE = re.compile(
-    rf"({_NAME})\s++({_NAME})\s*+\(\s*+({_UNGROUPED_PIN}\s*+(?:,\s*+{_UNGROUPED_PIN}\s*+)*+)\)\s*+;"
-)
+_FAST_INSTANCE = re.compile(rf"({_NAME})\s++({_NAME})\s*+\(\s*+({_UNGROUPED_PIN}\s*+(?:,\s*+{_UNGROUPED_PIN}\s*+)*+)\)\s*+;")
 _FAST_DECLARATION = re.compile(
     rf"(input|output|inout|wire)\s++(?:\[\s*+(\d++)\s*+:\s*+(\d++)\s*+\]\s*+)?({_NAME}(?:\s*+,\s*+{_NAME})*+)\s*+;"
 )
@@ -218,9 +214,7 @@ def _take(module: Module, parsed: Any, at: int) -> None:
 def _declare(module: Module, direction: str | None, net_type: str, bounds: Range | None, entries: Any) -> None:
     for name, offset in entries:
         if len(name) > MAX_NAME_LENGTH:
-            raise module.file.error(
-                offset, f"a name of at most {MAX_NAME_LENGTH} characters", f"{len(name)}", LimitError
-            )
+            raise module.file.error(offset, f"a name of at most {MAX_NAME_LENGTH} characters", f"{len(name)}", LimitError)
         if direction is not None:
             if name not in module.ports:
                 raise module.file.error(offset, f"a port of module {module.name}")

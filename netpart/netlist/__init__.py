@@ -20,6 +20,7 @@ from netpart.netlist.names import Names
 from netpart.netlist.partition import OBJECTIVES, Partition, spans
 from netpart.netlist.restrict import restrict
 from netpart.netlist.rules import FREE, AreaWindow, Rules
+from netpart.netlist.survey import Survey, survey
 
 __all__ = [
     "FREE",
@@ -44,9 +45,11 @@ __all__ = [
     "Partition",
     "Rules",
     "Source",
+    "Survey",
     "UnknownNameError",
     "UsageError",
     "ValueRangeError",
     "restrict",
     "spans",
+    "survey",
 ]

@@ -219,9 +219,7 @@ class Netlist:
             raise ValueRangeError(f"cell {cell_names[bad[0]]!r} has area {area[bad[0]]}; expected a finite number ≥ 0")
         bad = np.flatnonzero(~(np.isfinite(weights) & (weights > 0)))
         if len(bad):
-            raise ValueRangeError(
-                f"net {net_names[bad[0]]!r} has weight {weights[bad[0]]}; expected a finite number > 0"
-            )
+            raise ValueRangeError(f"net {net_names[bad[0]]!r} has weight {weights[bad[0]]}; expected a finite number > 0")
         for names, what in ((cell_names, "cell"), (net_names, "net")):
             repeat = names.first_repeat()
             if repeat is not None:

@@ -114,8 +114,7 @@ class Partition:
             area = self.block_areas[i]
             limit, side = (window.lower[i], "below") if area < window.lower[i] else (window.upper[i], "above")
             faults.append(
-                f"block {rules.block_names[i]} has area {area:.6g}, "
-                f"{abs(area - limit):.6g} {side} its limit {limit:.6g}"
+                f"block {rules.block_names[i]} has area {area:.6g}, {abs(area - limit):.6g} {side} its limit {limit:.6g}"
             )
         if rules.fixed is not None:
             for v in np.flatnonzero((rules.fixed != FREE) & (rules.fixed != self.blocks)).tolist():
@@ -135,9 +134,7 @@ def spans(netlist: Netlist, blocks: NDArray[np.int32], num_blocks: int) -> NDArr
     return np.bincount(_touched(netlist, blocks, num_blocks)[0], minlength=netlist.num_nets)
 
 
-def _touched(
-    netlist: Netlist, blocks: NDArray[np.int32], num_blocks: int
-) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+def _touched(netlist: Netlist, blocks: NDArray[np.int32], num_blocks: int) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
     """The different (net, block) pairs, as two arrays."""
     nets = np.repeat(np.arange(netlist.num_nets, dtype=np.int64), netlist.net_sizes)
     pairs = np.unique(nets * num_blocks + blocks[netlist.net_cells])

@@ -66,7 +66,7 @@ class Bisection:
         degree = kernels.compute_gains(*nets, netlist.net_weights, self.blocks, self._counts, self._gains)
         self.load = np.bincount(self.blocks, netlist.areas, 2)
         # Whole weights have a bucket for every gain; others, and very large ones, share buckets, and gains stay exact.
-        whole = degree == 0 or degree <= _MAX_REACH and bool(np.all(netlist.net_weights == np.floor(netlist.net_weights)))
+        whole = degree == 0 or (degree <= _MAX_REACH and bool(np.all(netlist.net_weights == np.floor(netlist.net_weights))))
         self._reach = max(int(degree), 1) if whole else _MAX_REACH
         self._scale = 1.0 if whole else _MAX_REACH / degree
         self._arrays = (*nets, netlist.cell_offsets, netlist.cell_nets, netlist.net_weights, netlist.areas)

@@ -11,6 +11,7 @@ from netpart.report.record import (
     load_schema,
     make_record,
 )
+from netpart.report.survey import show_survey
 from netpart.report.terminal import show_audit, show_bounds, show_split
 
 __all__ = [
@@ -28,6 +29,7 @@ __all__ = [
     "show_audit",
     "show_bounds",
     "show_split",
+    "show_survey",
     "version",
     "write_files",
 ]

@@ -165,9 +165,7 @@ def _check_rules(netlist: Netlist, blocks: list[str], figures: Mapping[str, Any]
     for name, share in zip(rules.block_names, rules.shares, strict=True):
         low, high = (1 - rules.tolerance) * share * total, (1 + rules.tolerance) * share * total
         holds = low - slack <= areas[name] <= high + slack
-        yield Finding(
-            f"area of block {name}", f"{float(low):.6g} … {float(high):.6g}", f"{float(areas[name]):.6g}", holds
-        )
+        yield Finding(f"area of block {name}", f"{float(low):.6g} … {float(high):.6g}", f"{float(areas[name]):.6g}", holds)
     if rules.fixed is not None:
         strayed = [
             cell

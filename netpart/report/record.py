@@ -66,9 +66,7 @@ def format_assignment(netlist: Netlist, blocks: NDArray[np.int32], rules: Rules)
     writer = csv.writer(text, lineterminator="\n")
     writer.writerow(("cell", "block"))
     block_names = rules.block_names
-    writer.writerows(
-        (name, block_names[block]) for name, block in zip(netlist.cell_names, blocks.tolist(), strict=True)
-    )
+    writer.writerows((name, block_names[block]) for name, block in zip(netlist.cell_names, blocks.tolist(), strict=True))
     return text.getvalue().encode("utf-8", "surrogateescape")
 
 

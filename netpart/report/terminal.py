@@ -15,7 +15,7 @@ from netpart.netlist import Netlist, Rules
 from netpart.report.audit import AuditReport
 from netpart.solve.result import Result
 
-__all__ = ["CAUTION", "scale", "show_audit", "show_bounds", "show_split"]
+__all__ = ["CAUTION", "plain", "print_notes", "scale", "show_audit", "show_bounds", "show_split", "table"]
 
 CAUTION = (
     "Before this cut is used: clock, reset, power and voltage domains, scan order and timing across the blocks are not "
@@ -46,37 +46,35 @@ def show_split(result: Result, console: Console) -> None:
         console.print()
         console.print(Padding(_spectrum(result.spectral), (0, 0, 0, 2)))
     console.print()
-    _print_notes(console, [*result.broken_rules], "broken rule", "bold red")
-    _print_notes(console, result.warnings, "note", "yellow")
+    print_notes(console, [*result.broken_rules], "broken rule", "bold red")
+    print_notes(console, result.warnings, "note", "yellow")
     console.print(Text(CAUTION, style="dim"))
 
 
-def show_bounds(
-    netlist: Netlist, rules: Rules, bounds: Sequence[Bound], warnings: Sequence[str], console: Console
-) -> None:
+def show_bounds(netlist: Netlist, rules: Rules, bounds: Sequence[Bound], warnings: Sequence[str], console: Console) -> None:
     """Print lower bounds alone."""
     console.print(_heading(netlist, rules))
     console.print()
-    table = _table("bound", "at least", "verified by", "seconds", right=(1, 3))
+    rows = table("bound", "at least", "verified by", "seconds", right=(1, 3))
     for bound in sorted(bounds, key=lambda entry: -entry.value):
-        table.add_row(bound.kind, f"{bound.value:g}", bound.certificate or "", f"{bound.seconds:.2f}")
+        rows.add_row(bound.kind, f"{bound.value:g}", bound.certificate or "", f"{bound.seconds:.2f}")
     if bounds:
-        console.print(Padding(table, (0, 0, 0, 2)))
+        console.print(Padding(rows, (0, 0, 0, 2)))
         best = max(bound.value for bound in bounds)
         console.print()
         console.print(f"No legal partition has a cost below {best:g}.", style="bold", highlight=False)
     else:
         console.print("No bound could be verified; none is printed.", style="bold", highlight=False)
-    _print_notes(console, warnings, "note", "yellow")
+    print_notes(console, warnings, "note", "yellow")
 
 
 def show_audit(report: AuditReport, console: Console) -> None:
     """Print every finding, wrong ones marked by a word as well as by colour."""
-    table = _table("checked", "claimed or allowed", "found", "", right=())
+    rows = table("checked", "claimed or allowed", "found", "", right=())
     for finding in report.findings:
         verdict = Text("holds", style="green") if finding.holds else Text("WRONG", style="bold red")
-        table.add_row(_plain(finding.subject), _plain(finding.claimed), _plain(finding.found), verdict)
-    console.print(Padding(table, (0, 0, 0, 2)))
+        rows.add_row(plain(finding.subject), plain(finding.claimed), plain(finding.found), verdict)
+    console.print(Padding(rows, (0, 0, 0, 2)))
     console.print()
     style = "bold green" if report.success else "bold red"
     console.print(Text(f"{report.status}: {report.message}", style=style))
@@ -127,73 +125,75 @@ def _heading(netlist: Netlist, rules: Rules) -> Text:
 
 
 def _figures(result: Result) -> Table:
-    table = Table.grid(padding=(0, 2))
-    table.add_column(no_wrap=True)
-    table.add_column(justify="right", no_wrap=True)
-    table.add_column()
+    grid = Table.grid(padding=(0, 2))
+    grid.add_column(no_wrap=True)
+    grid.add_column(justify="right", no_wrap=True)
+    grid.add_column()
     partition, netlist = result.partition, result.netlist
     weighted = "" if partition.cut_nets == partition.num_cut else f"weights of {partition.num_cut:,} nets"
     share = f"{partition.num_cut / netlist.num_nets:.2%} of all nets".replace("%", " %") if netlist.num_nets else ""
-    table.add_row("cut nets", Text(f"{partition.cut_nets:,.10g}", style="bold"), weighted or share)
+    grid.add_row("cut nets", Text(f"{partition.cut_nets:,.10g}", style="bold"), weighted or share)
     if result.request.objective != "cut-nets" or result.request.rules.num_blocks > 2:
-        table.add_row("connectivity", f"{partition.connectivity:,.10g}", "Σ w(e) (blocks touched − 1)")
-        table.add_row("terminals", f"{partition.terminals:,.10g}", "Σ w(e) (blocks touched), cut nets")
+        grid.add_row("connectivity", f"{partition.connectivity:,.10g}", "Σ w(e) (blocks touched − 1)")
+        grid.add_row("terminals", f"{partition.terminals:,.10g}", "Σ w(e) (blocks touched), cut nets")
     if result.best_bound is None:
-        table.add_row("lower bound", "–", "none verified")
+        grid.add_row("lower bound", "–", "none verified")
     else:
         best = max((bound for bound in result.bounds if bound.verified), key=lambda bound: bound.value)
-        table.add_row("lower bound", Text(f"{best.value:,.10g}", style="bold blue"), f"{best.kind}, verified")
+        grid.add_row("lower bound", Text(f"{best.value:,.10g}", style="bold blue"), f"{best.kind}, verified")
     if result.gap is not None:
         meaning = "proved optimal" if result.gap == 0 else "at most this much better can any legal cut be"
-        table.add_row("gap", Text(f"{result.gap * 100:.1f} %", style="bold"), meaning)
+        grid.add_row("gap", Text(f"{result.gap * 100:.1f} %", style="bold"), meaning)
     verdict = Text("LEGAL", style="bold green") if not result.broken_rules else Text("NOT LEGAL", style="bold red")
     allowed = f"of {float(result.request.rules.tolerance) * 100:.4g} % allowed"
     deviation = partition.imbalance(netlist, result.request.rules)
-    table.add_row("balance", verdict, f"largest deviation {deviation * 100:.2f} % {allowed}")
-    return table
+    grid.add_row("balance", verdict, f"largest deviation {deviation * 100:.2f} % {allowed}")
+    return grid
 
 
 def _blocks(result: Result) -> Table:
     partition, rules = result.partition, result.request.rules
     total = result.netlist.total_area
-    table = _table("block", "area", "share", "allowed", "cells", "terminals", right=(1, 2, 3, 4, 5))
+    rows = table("block", "area", "share", "allowed", "cells", "terminals", right=(1, 2, 3, 4, 5))
     for i, name in enumerate(rules.block_names):
         target = float(rules.shares[i])
         low, high = (target * (1 + sign * float(rules.tolerance)) * 100 for sign in (-1, 1))
         share = f"{partition.block_areas[i] / total * 100:.2f} %" if total else "–"
-        table.add_row(
-            _plain(name),
+        rows.add_row(
+            plain(name),
             f"{partition.block_areas[i]:,.6g}",
             share,
             f"{low:.4g} – {high:.4g} %",
             f"{partition.block_cells[i]:,}",
             f"{partition.block_terminals[i]:,}",
         )
-    return table
+    return rows
 
 
 def _spectrum(spectral: dict[str, Any]) -> Text:
     text = Text("spectrum", style="dim")
-    text.append(f"  λ1 {spectral['lambda1']:.4g}, so every cut of the clique graph has conductance ")
+    text.append(f"  λ1 ≈ {spectral['lambda1']:.4g}: every cut of the clique graph has conductance ")
     text.append(f"{spectral['cheeger_low']:.4g} ≤ φ, and some φ ≤ {spectral['cheeger_high']:.4g} (Cheeger)")
     if spectral["conductance"] is not None:
         text.append(f"; the sweep's best has φ = {spectral['conductance']:.4g}")
     return text
 
 
-def _table(*headings: str, right: Iterable[int]) -> Table:
-    table = Table(box=None, pad_edge=False, padding=(0, 3, 0, 0), header_style="dim")
+def table(*headings: str, right: Iterable[int]) -> Table:
+    """A table without lines; `right` names the columns of figures."""
+    made = Table(box=None, pad_edge=False, padding=(0, 3, 0, 0), header_style="dim")
     for i, heading in enumerate(headings):
-        table.add_column(heading, justify="right" if i in right else "left", overflow="fold")
-    return table
+        made.add_column(heading, justify="right" if i in right else "left", overflow="fold")
+    return made
 
 
-def _print_notes(console: Console, notes: Iterable[str], label: str, style: str) -> None:
+def print_notes(console: Console, notes: Iterable[str], label: str, style: str) -> None:
+    """A line a note."""
     for note in notes:
-        console.print(Text(f"{label}: ", style=style).append(_plain(note), style="default not bold"))
+        console.print(Text(f"{label}: ", style=style).append(plain(note), style="default not bold"))
 
 
-def _plain(text: str) -> Text:
+def plain(text: str) -> Text:
     """Names from a netlist are data: control characters are shown, never sent to the terminal."""
     return Text("".join(c if c.isprintable() else c.encode("unicode_escape", "replace").decode() for c in text))
 

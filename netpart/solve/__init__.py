@@ -1,1 +1,23 @@
-"""Putting the stages together."""
+"""Putting the stages together: settings, starts, search, bounds, results."""
+
+from netpart.solve.journal import Budget, Event, Journal, StageCost, TraceRow
+from netpart.solve.result import Request, Result
+from netpart.solve.settings import EFFORTS, Settings
+from netpart.solve.spectrum import describe_spectrum
+from netpart.solve.split import bound, find_bounds, split
+
+__all__ = [
+    "EFFORTS",
+    "Budget",
+    "Event",
+    "Journal",
+    "Request",
+    "Result",
+    "Settings",
+    "StageCost",
+    "TraceRow",
+    "bound",
+    "describe_spectrum",
+    "find_bounds",
+    "split",
+]

@@ -11,6 +11,7 @@ from pathlib import Path
 from typing import Any
 
 from netpart.netlist import InputError, UsageError
+from netpart.refine import TIE_RULES
 
 __all__ = ["EFFORTS", "Settings"]
 
@@ -23,19 +24,29 @@ def _knob(default: Any, text: str, *, choices: tuple[str, ...] = (), low: float 
 class Settings:
     """All settings of the engine; `describe` prints them with their meaning."""
 
-    starts: int = _knob(4, "independent starts; the best is kept", low=1, high=100_000)
-    seed_from: str = _knob("sweep", "first partition of a start", choices=("sweep", "random", "grown"))
-    method: str = _knob("moves", "how a partition is improved: single moves or pair swaps", choices=("moves", "swaps"))
-    passes: int = _knob(30, "passes at most per refinement", low=0)
-    stall: int = _knob(2000, "moves without improvement after which a pass ends", low=1)
-    tie_rule: str = _knob(
-        "newest", "which of the cells with equal gain moves first", choices=("newest", "oldest", "random")
+    starts: int = _knob(12, "independent starts", low=1, high=100_000)
+    levels: str = _knob("many", "refine on a hierarchy of clusters, or on the netlist alone", choices=("many", "one"))
+    seed_from: str = _knob(
+        "each",
+        "first partition: spectral sweep, random, grown breadth-first, or each of them in turn",
+        choices=("sweep", "random", "grown", "each"),
     )
+    seed_tries: int = _knob(5, "first partitions on the coarsest level, the best is taken down", low=1, high=1000)
+    method: str = _knob("moves", "single moves, or moves and then pair swaps", choices=("moves", "swaps"))
+    passes: int = _knob(4, "passes at most on a level", low=0, high=10_000)
+    stall: int = _knob(100, "moves without improvement after which a pass ends", low=1)
+    tie_rule: str = _knob("newest", "which of the cells with equal gain moves first", choices=TIE_RULES)
+    coarsest: int = _knob(150, "clusters on the coarsest level", low=2, high=100_000)
+    coarsen_ratio: float = _knob(1.8, "cells per cluster from a level to the next, at most", low=1.1, high=10)
+    coarsen_area_power: float = _knob(0.5, "how much small clusters are preferred", low=0, high=4)
+    coarsen_area_cap: float = _knob(4.0, "largest cluster, in shares of total area / coarsest", low=0.5, high=1000)
+    coarsen_net_size: int = _knob(40, "nets with more cells don't attract clusters", low=2)
+    pool: int = _knob(4, "solutions that are followed up", low=1, high=1000)
+    cycles: int = _knob(2, "times the pool is coarsened within its blocks and improved again", low=0, high=10_000)
+    recombinations: int = _knob(8, "times two solutions of the pool are recombined", low=0, high=100_000)
 
     @classmethod
-    def from_mapping(
-        cls, values: Mapping[str, Any], base: Settings | None = None, source: str = "settings"
-    ) -> Settings:
+    def from_mapping(cls, values: Mapping[str, Any], base: Settings | None = None, source: str = "settings") -> Settings:
         """Settings from names and values on top of `base`.
 
         Raises
@@ -124,8 +135,8 @@ def _check(knob: Any, value: Any, source: str) -> None:
 
 
 EFFORTS: dict[str, dict[str, Any]] = {
-    "quick": {"starts": 1},
-    "normal": {"starts": 4},
-    "thorough": {"starts": 20},
+    "quick": {"starts": 1, "pool": 1, "cycles": 0, "recombinations": 0},
+    "normal": {},
+    "thorough": {"starts": 40, "pool": 8, "cycles": 3, "recombinations": 64},
 }
 """Presets by name: what each sets differently from the defaults of `Settings`."""

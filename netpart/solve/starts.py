@@ -30,9 +30,7 @@ def random_state(seed: int, *path: int) -> NDArray[np.uint64]:
     return np.random.SeedSequence(seed, spawn_key=path).generate_state(4, np.uint64)
 
 
-def run_in_order(
-    tasks: Sequence[Callable[[], _T]], jobs: int, budget: Budget, done: Callable[[int, _T], None]
-) -> list[_T]:
+def run_in_order(tasks: Sequence[Callable[[], _T]], jobs: int, budget: Budget, done: Callable[[int, _T], None]) -> list[_T]:
     """Run tasks on up to `jobs` threads and return their results in task order.
 
     The first task always runs. When the budget is exhausted no further task begins, and the list ends before the first

@@ -16,9 +16,7 @@ from tests.strategies import make_netlist, netlists, plain_costs
 @given(netlists(max_cells=12, max_nets=20), st.data())
 def test_contraction_keeps_every_cut(netlist: Netlist, data: st.DataObject) -> None:
     num_clusters = data.draw(st.integers(1, netlist.num_cells))
-    labels = data.draw(
-        st.lists(st.integers(0, num_clusters - 1), min_size=netlist.num_cells, max_size=netlist.num_cells)
-    )
+    labels = data.draw(st.lists(st.integers(0, num_clusters - 1), min_size=netlist.num_cells, max_size=netlist.num_cells))
     cluster = np.array(labels, np.int32)
     coarse = contract(Level(netlist, np.full(netlist.num_cells, FREE, np.int32)), cluster, num_clusters).netlist
     blocks = np.array(data.draw(st.lists(st.integers(0, 3), min_size=num_clusters, max_size=num_clusters)), np.int32)

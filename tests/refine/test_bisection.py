@@ -28,9 +28,7 @@ def _plain_gains(netlist: Netlist, blocks: np.ndarray) -> list[float]:
 @given(netlists(), st.data())
 def test_tallies_follow_every_pass(netlist: Netlist, data: st.DataObject) -> None:
     blocks = np.array(data.draw(st.lists(st.integers(0, 1), min_size=netlist.num_cells, max_size=netlist.num_cells)))
-    fixed = np.where(
-        np.array(data.draw(st.lists(st.booleans(), min_size=len(blocks), max_size=len(blocks)))), blocks, FREE
-    )
+    fixed = np.where(np.array(data.draw(st.lists(st.booleans(), min_size=len(blocks), max_size=len(blocks)))), blocks, FREE)
     window = Rules.from_request(2, tolerance=data.draw(st.sampled_from(["0%", "10%", "40%"]))).window(netlist)
     work = Bisection(netlist, blocks, window, fixed.astype(np.int32))
     start = (work.violation, work.cut)
