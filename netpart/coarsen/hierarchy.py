@@ -151,7 +151,7 @@ def contract(level: Level, cluster: NDArray[np.int32], num_clusters: int) -> Lev
     net_offsets, net_cells, net_weights, cell_offsets, cell_nets = kernels.contract_nets(
         source.net_offsets, source.net_cells, source.net_weights, cluster, num_clusters
     )
-    areas = np.bincount(cluster, source.areas, num_clusters)
+    areas = np.bincount(cluster, source.areas, num_clusters).astype(np.float64)
     fixed = np.full(num_clusters, FREE, np.int32)
     pinned = level.fixed != FREE
     fixed[cluster[pinned]] = level.fixed[pinned]

@@ -244,13 +244,13 @@ class _Flattener:
                 number = find_net(net) if not bit else scope.bits.get((net, bit))
                 if number is None:
                     for position, number in scope.simple_nets(net, bit, instance):
-                        name = port if position is None else f"{port}[{position}]"
-                        self._add_pin(number, _direction_of(directions, port, name))
+                        pin = port if position is None else f"{port}[{position}]"
+                        self._add_pin(number, _direction_of(directions, port, pin))
                 else:
                     self._add_pin(number, directions.get(port.lstrip("\\"), 0))
         else:
-            for port, number, direction in self._connected(scope, instance):
-                self._add_pin(number, direction if direction is not None else _direction_of(directions, *port))
+            for names, number, direction in self._connected(scope, instance):
+                self._add_pin(number, direction if direction is not None else _direction_of(directions, *names))
         name = scope.prefix + (instance.name or f"{instance.type}_{instance.offset}")
         self._name_cell(name, instance.type, path_index)
 

@@ -161,7 +161,8 @@ def _take_number(text: str, loc: int, tokens: pp.ParseResults) -> Any:
 
 
 # An escaped identifier may spell a reserved word, a simple one may not.
-_identifier = pp.Regex(rf"(?:(?!(?:{'|'.join(sorted(KEYWORDS))})(?![A-Za-z0-9_$]))[A-Za-z_][A-Za-z0-9_$]*|\\[^\s]+)")
+_RESERVED = "|".join(sorted(KEYWORDS))
+_identifier: pp.ParserElement = pp.Regex(rf"(?:(?!(?:{_RESERVED})(?![A-Za-z0-9_$]))[A-Za-z_][A-Za-z0-9_$]*|\\[^\s]+)")
 _identifier = _identifier.set_parse_action(lambda tokens: plain_name(tokens[0])).set_name("a name")
 _integer = pp.Regex(r"-?\d[\d_]*").set_parse_action(lambda tokens: int(tokens[0].replace("_", ""))).set_name("a number")
 _constant = (
@@ -172,7 +173,8 @@ _constant = (
     .set_parse_action(_take_number)
     .set_name("a constant")
 )
-_expression = pp.Forward().set_name("a net, a select, a concatenation or a constant")
+_expression = pp.Forward()
+_expression.set_name("a net, a select, a concatenation or a constant")
 _select = pp.Located(_identifier) + pp.Optional(_sign("[") - _integer + pp.Optional(_sign(":") - _integer) + _sign("]"))
 
 

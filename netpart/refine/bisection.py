@@ -64,7 +64,7 @@ class Bisection:
         nets = (netlist.net_offsets, netlist.net_cells)
         self.cut = float(kernels.count_sides(*nets, netlist.net_weights, self.blocks, self._counts))
         degree = kernels.compute_gains(*nets, netlist.net_weights, self.blocks, self._counts, self._gains)
-        self.load = np.bincount(self.blocks, netlist.areas, 2)
+        self.load = np.bincount(self.blocks, netlist.areas, 2).astype(np.float64)
         # Whole weights have a bucket for every gain; others, and very large ones, share buckets, and gains stay exact.
         whole = degree == 0 or (degree <= _MAX_REACH and bool(np.all(netlist.net_weights == np.floor(netlist.net_weights))))
         self._reach = max(int(degree), 1) if whole else _MAX_REACH

@@ -27,7 +27,7 @@ def seed_number(rng: int | np.random.Generator | None) -> int:
 
 def random_state(seed: int, *path: int) -> NDArray[np.uint64]:
     """(4,) uint64 state for the kernels' random numbers; different for every path below a seed."""
-    return np.random.SeedSequence(seed, spawn_key=path).generate_state(4, np.uint64)
+    return np.random.SeedSequence(seed, spawn_key=path).generate_state(4, np.uint64).astype(np.uint64)
 
 
 def run_in_order(tasks: Sequence[Callable[[], _T]], jobs: int, budget: Budget, done: Callable[[int, _T], None]) -> list[_T]:

@@ -12,7 +12,7 @@ import scipy.sparse as sparse
 from numpy.typing import NDArray
 from scipy.sparse.linalg import LinearOperator, eigsh, lobpcg, splu
 
-from netpart.expand import CliqueLaplacian, laplacian, star_adjacency
+from netpart.expand import CliqueGraph, StarGraph, Weighting, area_weighted_laplacian, pair_weights
 from netpart.netlist import Netlist
 
 __all__ = ["MASSES", "Eigenpair", "second_eigenpair"]
@@ -50,7 +50,7 @@ def second_eigenpair(
     levels: Sequence[tuple[Netlist, NDArray[np.int32] | None]],
     *,
     mass: str = "degree",
-    weighting: str = "standard",
+    weighting: Weighting = "standard",
     tolerance: float = 1e-7,
 ) -> Eigenpair:
     """The smallest nonzero eigenvalue of L x = λ M x on the clique expansion of a connected netlist, and its vector.
@@ -96,14 +96,14 @@ def second_eigenpair(
 class _Scaled:
     """M^(-1/2) L M^(-1/2) of a netlist: the operator, its kernel, and the way back to x."""
 
-    def __init__(self, netlist: Netlist, mass: str, weighting: str) -> None:
-        graph = CliqueLaplacian.from_netlist(netlist, weighting)
+    def __init__(self, netlist: Netlist, mass: str, weighting: Weighting) -> None:
+        graph = CliqueGraph.from_netlist(netlist, weighting)
         masses = graph.degrees if mass == "degree" else netlist.areas
         mean = float(masses.mean()) or 1.0
         self.masses = np.where(masses > 0, masses, _TINY_AREA * mean)
         self.scale = 1 / np.sqrt(self.masses)
         self.kernel = np.sqrt(self.masses / self.masses.sum())
-        self.operator = graph.scaled(self.scale)
+        self.operator = area_weighted_laplacian(graph, self.masses)
         self.diagonal = graph.degrees * self.scale * self.scale
 
     def finish(self, y: NDArray[np.float64]) -> Eigenpair:
@@ -118,19 +118,19 @@ class _Scaled:
         return Eigenpair(max(value, 0.0), x, float(np.linalg.norm(product - value * y)))
 
 
-def _solve_direct(netlist: Netlist, mass: str, weighting: str) -> Eigenpair:
+def _solve_direct(netlist: Netlist, mass: str, weighting: Weighting) -> Eigenpair:
     problem = _Scaled(netlist, mass, weighting)
     size = netlist.num_cells
     shift = _SHIFT * float(problem.diagonal.mean())
-    star = laplacian(star_adjacency(netlist, weighting))
-    loads = np.concatenate([shift * problem.masses, np.where(netlist.net_sizes < 2, 1.0, 0.0)])
+    star = StarGraph.from_netlist(netlist, netlist.net_sizes * pair_weights(netlist, weighting))
+    loads = np.concatenate([shift * problem.masses, np.where(star.spokes > 0, 0.0, 1.0)])
     factors = splu(
-        (star + sparse.diags_array(loads)).tocsc(),
+        (star.laplacian() + sparse.diags_array(loads)).tocsc(),
         permc_spec="MMD_AT_PLUS_A",
         diag_pivot_thresh=0.0,
         options={"SymmetricMode": True, "Equil": False},
     )
-    padded = np.zeros(size + netlist.num_nets)
+    padded = np.zeros(len(loads))
 
     def invert(y: NDArray[np.float64]) -> NDArray[np.float64]:
         y = y.ravel()
@@ -146,7 +146,7 @@ def _solve_direct(netlist: Netlist, mass: str, weighting: str) -> Eigenpair:
 
 
 def _solve_nested(
-    netlist: Netlist, guess: NDArray[np.float64] | None, mass: str, weighting: str, tolerance: float, steps: int
+    netlist: Netlist, guess: NDArray[np.float64] | None, mass: str, weighting: Weighting, tolerance: float, steps: int
 ) -> Eigenpair:
     problem = _Scaled(netlist, mass, weighting)
     size = netlist.num_cells

@@ -8,10 +8,11 @@ from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
+import scipy.sparse as sparse
 import scipy.sparse.csgraph
 from numpy.typing import NDArray
 
-from netpart.expand import star_adjacency
+from netpart.expand import incidence
 from netpart.netlist import AreaWindow, Netlist, restrict
 from netpart.spectral.eigen import Eigenpair, second_eigenpair
 from netpart.spectral.sweep import Profile, legal_seed, sweep_profile
@@ -78,7 +79,9 @@ class Spectrum:
 
 def find_components(netlist: Netlist) -> list[NDArray[np.int32]]:
     """The connected parts, the one of largest area first; ties by size, then by first cell."""
-    count, labels = scipy.sparse.csgraph.connected_components(star_adjacency(netlist), directed=False)
+    holds = incidence(netlist)
+    joined = sparse.block_array([[None, holds.T], [holds, None]], format="csr")
+    count, labels = scipy.sparse.csgraph.connected_components(joined, directed=False)
     labels = labels[: netlist.num_cells]
     order = np.argsort(labels, kind="stable").astype(np.int32)
     sizes = np.bincount(labels, minlength=count)

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from netpart.expand import CliqueLaplacian
+from netpart.expand import Weighting, pair_weights
 from netpart.netlist import FREE, AreaWindow, Netlist
 
 __all__ = ["Profile", "legal_seed", "sweep_profile"]
@@ -43,14 +43,14 @@ class Profile:
         return float(self.conductance.min()) if len(self.conductance) and np.isfinite(self.conductance).any() else None
 
 
-def sweep_profile(netlist: Netlist, order: NDArray[np.int64], weighting: str = "standard") -> Profile:
+def sweep_profile(netlist: Netlist, order: NDArray[np.int64], weighting: Weighting = "standard") -> Profile:
     """All thresholds of an ordering of the cells, in O(p log p).
 
     When the order is that of D^(−1/2) times the second eigenvector of the normalised Laplacian, the best conductance φ
     obeys λ1/2 ≤ φ ≤ √(2 λ1) (Cheeger's inequality; Chung, Spectral Graph Theory, 1997, ch. 2).
     """
     size = netlist.num_cells
-    graph = CliqueLaplacian.from_netlist(netlist, weighting)
+    pairs = pair_weights(netlist, weighting)
     position = np.empty(size, np.int64)
     position[order] = np.arange(size)
     nets = np.repeat(np.arange(netlist.num_nets), netlist.net_sizes)
@@ -58,18 +58,19 @@ def sweep_profile(netlist: Netlist, order: NDArray[np.int64], weighting: str = "
     sorting = np.lexsort((pins, nets))
     pins = pins[sorting]
     rank = np.arange(len(pins)) - np.repeat(netlist.net_offsets[:-1], netlist.net_sizes)
-    step = graph.pairs[nets] * (netlist.net_sizes[nets] - 1 - 2 * rank)
-    graph_cut = np.cumsum(np.bincount(pins, step, size))[:-1]
+    step = pairs[nets] * (netlist.net_sizes[nets] - 1 - 2 * rank)
+    graph_cut = np.cumsum(np.bincount(pins, step, size).astype(np.float64))[:-1]
 
     joined = netlist.net_sizes >= 2
     first = pins[netlist.net_offsets[:-1][joined]]
     last = pins[netlist.net_offsets[1:][joined] - 1]
     change = np.bincount(first, netlist.net_weights[joined], size) - np.bincount(last, netlist.net_weights[joined], size)
-    volume = np.cumsum(graph.degrees[order])
+    degrees = np.bincount(pins, pairs[nets] * (netlist.net_sizes[nets] - 1), size)
+    volume = np.cumsum(degrees)
     smaller = np.minimum(volume[:-1], volume[-1] - volume[:-1])
     with np.errstate(divide="ignore", invalid="ignore"):
         conductance = np.where(smaller > 1e-12 * volume[-1], np.maximum(graph_cut, 0.0) / smaller, np.inf)
-    return Profile(np.cumsum(change)[:-1], graph_cut, conductance, np.cumsum(netlist.areas[order])[:-1])
+    return Profile(np.cumsum(change.astype(np.float64))[:-1], graph_cut, conductance, np.cumsum(netlist.areas[order])[:-1])
 
 
 def legal_seed(
