@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import math
 import time
-from collections.abc import Callable
 from fractions import Fraction
 
 import numpy as np
@@ -14,7 +13,7 @@ from netpart.bounds.eigenproof import EigenProof, prove_eigenvalue
 from netpart.expand import pair_weights
 from netpart.netlist import Netlist, Rules, restrict
 from netpart.spectral.eigen import second_eigenpair
-from netpart.spectral.spectrum import Levels, find_components
+from netpart.spectral.spectrum import find_components
 
 __all__ = ["smallest_area_product", "spectral_bound"]
 
@@ -22,7 +21,7 @@ _RETREATS = (1e-7, 1e-5, 1e-3, 1e-2, 0.1)
 _MAX_SIZE = 150_000
 
 
-def spectral_bound(netlist: Netlist, rules: Rules, objective: str, coarsen: Callable[[Netlist], Levels]) -> Bound | None:
+def spectral_bound(netlist: Netlist, rules: Rules, objective: str) -> Bound | None:
     """A verified lower bound on the cost of every legal partition, or None where none can be proved.
 
     Let λ be the smallest nonzero eigenvalue of L x = λ diag(a) x on the clique expansion with bounding weights. For two
@@ -40,8 +39,6 @@ def spectral_bound(netlist: Netlist, rules: Rules, objective: str, coarsen: Call
     rules : Rules
     objective : str
         One of `netlist.OBJECTIVES`.
-    coarsen : callable
-        See `spectral.find_spectrum`.
     """
     started = time.monotonic()
     cells = np.sort(find_components(netlist)[0])
@@ -57,7 +54,7 @@ def spectral_bound(netlist: Netlist, rules: Rules, objective: str, coarsen: Call
     areas = part.areas / 2.0 ** round(math.log2(mean))
     unit = Fraction(2) ** round(math.log2(mean))
     claimed = second_eigenpair(
-        coarsen(Netlist.from_clusters(part.net_offsets, part.net_cells, areas=areas, net_weights=part.net_weights)),
+        Netlist.from_clusters(part.net_offsets, part.net_cells, areas=areas, net_weights=part.net_weights),
         mass="area",
         weighting="bounding",
     ).value

@@ -62,7 +62,7 @@ def incidence(netlist: Netlist, nets: NDArray[np.bool_] | None = None) -> sp.csr
     whole = sp.csr_array(
         (np.ones(netlist.num_pins), netlist.net_cells, netlist.net_offsets), shape=(netlist.num_nets, netlist.num_cells)
     )
-    return whole if nets is None else whole[np.flatnonzero(nets)]
+    return whole.copy() if nets is None else whole[np.flatnonzero(nets)]
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -1,4 +1,4 @@
-"""The spectral stage as the other stages use it: its hierarchy, its figures, its seeds."""
+"""The spectral stage as the other stages use it: its figures, its seeds."""
 
 from __future__ import annotations
 
@@ -7,23 +7,16 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from netpart.coarsen import build_hierarchy
 from netpart.netlist import AreaWindow, Netlist
 from netpart.solve.journal import Journal
 from netpart.spectral import Spectrum, find_spectrum
 
-__all__ = ["coarsen_for_spectrum", "describe_spectrum", "sweep_seed"]
-
-
-def coarsen_for_spectrum(netlist: Netlist) -> list[tuple[Netlist, NDArray[np.int32] | None]]:
-    """Levels for the nested iteration; always the same ones for the same netlist."""
-    hierarchy = build_hierarchy(netlist, np.random.default_rng(0))
-    return [(level.netlist, level.cluster) for level in hierarchy.levels]
+__all__ = ["describe_spectrum", "sweep_seed"]
 
 
 def sweep_seed(netlist: Netlist, window: AreaWindow, fixed: NDArray[np.int32]) -> NDArray[np.int32] | None:
     """The sweep's bisection of a (coarse) netlist, or None where its largest connected part is too small for one."""
-    spectrum = find_spectrum(netlist, coarsen_for_spectrum)
+    spectrum = find_spectrum(netlist)
     if spectrum is None:
         return None
     return spectrum.seed(window, fixed if np.any(fixed >= 0) else None)
@@ -32,7 +25,7 @@ def sweep_seed(netlist: Netlist, window: AreaWindow, fixed: NDArray[np.int32]) -
 def describe_spectrum(netlist: Netlist, journal: Journal) -> tuple[Spectrum | None, dict[str, Any] | None]:
     """The spectrum and its part of a record."""
     with journal.stage("spectrum", "second eigenpair and sweep"):
-        spectrum = find_spectrum(netlist, coarsen_for_spectrum)
+        spectrum = find_spectrum(netlist)
     if spectrum is None:
         return None, None
     if spectrum.parts:

@@ -13,7 +13,7 @@ from netpart.solve.journal import Budget, Journal
 from netpart.solve.kway import partition_blocks
 from netpart.solve.result import Request, Result
 from netpart.solve.settings import Settings
-from netpart.solve.spectrum import coarsen_for_spectrum, describe_spectrum
+from netpart.solve.spectrum import describe_spectrum
 from netpart.solve.starts import seed_number
 
 __all__ = ["bound", "find_bounds", "split"]
@@ -121,7 +121,7 @@ def find_bounds(netlist: Netlist, rules: Rules, objective: str, *, journal: Jour
     bounds: list[Bound] = []
     if rules.num_blocks > 1 and not budget.exhausted:
         with journal.stage("bound", "spectral lower bound and its proof"):
-            found = spectral_bound(netlist, rules, objective, coarsen_for_spectrum)
+            found = spectral_bound(netlist, rules, objective)
         if found is not None:
             bounds.append(found)
     return tuple(sorted(bounds, key=lambda entry: -entry.value))

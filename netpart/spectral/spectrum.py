@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -12,19 +11,20 @@ import scipy.sparse as sparse
 import scipy.sparse.csgraph
 from numpy.typing import NDArray
 
-from netpart.expand import incidence
+from netpart.expand import Weighting, incidence
 from netpart.netlist import AreaWindow, Netlist, restrict
 from netpart.spectral.eigen import Eigenpair, second_eigenpair
 from netpart.spectral.sweep import Profile, legal_seed, sweep_profile
 
-__all__ = ["Levels", "Spectrum", "find_components", "find_spectrum"]
-
-Levels = Sequence[tuple[Netlist, NDArray[np.int32] | None]]
+__all__ = ["Spectrum", "find_components", "find_spectrum"]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Spectrum:
-    """What the normalised Laplacian of the clique expansion (weights w/(|e| − 1)) says of the largest connected part.
+    """What an eigenvector of the clique expansion says of the largest connected part of a netlist.
+
+    The graph that λ1, volumes and conductance belong to is the clique expansion with weights w/(|e| − 1), unless another
+    weighting was asked for; Cheeger's inequality is about its normalised Laplacian (mass ``"degree"``).
 
     Attributes
     ----------
@@ -69,6 +69,7 @@ class Spectrum:
         return {
             "lambda1": self.pair.value,
             "residual": self.pair.residual,
+            "converged": self.pair.converged,
             "cheeger_low": self.cheeger_low,
             "cheeger_high": self.cheeger_high,
             "conductance": self.profile.best_conductance,
@@ -90,20 +91,17 @@ def find_components(netlist: Netlist) -> list[NDArray[np.int32]]:
     return sorted(groups, key=lambda group: (-areas[labels[group[0]]], -len(group), int(group[0])))
 
 
-def find_spectrum(netlist: Netlist, coarsen: Callable[[Netlist], Levels]) -> Spectrum | None:
+def find_spectrum(netlist: Netlist, *, mass: str = "degree", weighting: Weighting = "standard") -> Spectrum | None:
     """The spectrum of the largest connected part, or None where it has fewer than three cells.
 
-    Parameters
-    ----------
-    netlist : Netlist
-    coarsen : callable
-        Gives the levels of a netlist for the nested iteration, see `second_eigenpair`.
+    `mass` and `weighting` are those of `second_eigenpair`.
     """
     components = find_components(netlist)
     cells = np.sort(components[0])
     if len(cells) < 3:
         return None
     part = netlist if len(components) == 1 else restrict(netlist, cells, whole_nets_only=True)
-    pair = second_eigenpair(coarsen(part))
+    pair = second_eigenpair(part, mass=mass, weighting=weighting)
     inner = np.lexsort((np.arange(len(cells)), pair.vector))
-    return Spectrum(netlist, cells, tuple(components[1:]), pair, cells[inner].astype(np.int64), sweep_profile(part, inner))
+    profile = sweep_profile(part, inner, weighting)
+    return Spectrum(netlist, cells, tuple(components[1:]), pair, cells[inner].astype(np.int64), profile)

@@ -135,18 +135,15 @@ def legal_seed(
 def _threshold_cuts(netlist: Netlist, sequence: NDArray[np.int64]) -> NDArray[np.float64]:
     """(c + 1,) cut nets when the first i cells of a sequence lie on one side."""
     size = len(sequence)
-    position = np.full(netlist.num_cells, -1, np.int64)
-    position[sequence] = np.arange(size)
-    joined = netlist.net_sizes >= 2
-    if not joined.any():
+    place = np.full(netlist.num_cells, -1, np.int64)
+    place[sequence] = np.arange(size)
+    used = netlist.net_sizes >= 1
+    if not used.any():
         return np.zeros(size + 1)
-    pins = position[netlist.net_cells]
-    starts = netlist.net_offsets[:-1][joined]
-    gathered = pins[np.repeat(joined, netlist.net_sizes)]
-    starts = np.concatenate([[0], np.cumsum(netlist.net_sizes[joined])[:-1]])
-    first, last = np.minimum.reduceat(gathered, starts), np.maximum.reduceat(gathered, starts)
-    inside = first >= 0
-    weights = netlist.net_weights[joined][inside]
+    places, starts = place[netlist.net_cells], netlist.net_offsets[:-1][used]
+    first, last = np.minimum.reduceat(places, starts), np.maximum.reduceat(places, starts)
+    inside = first >= 0  # a net lies in the sequence as a whole or not at all
+    weights = netlist.net_weights[used][inside]
     change = np.bincount(first[inside] + 1, weights, size + 1) - np.bincount(last[inside] + 1, weights, size + 1)
     return np.cumsum(change)
 
