@@ -23,7 +23,7 @@ import numpy as np
 from netpart.formats.library import CellType, ReadOptions, ignored_by_name
 from netpart.formats.source import SourceText
 from netpart.formats.verilog_grammar import GATES
-from netpart.formats.verilog_scan import Instance, Module, scan_modules
+from netpart.formats.verilog_scan import Instance, Module, parse_instance, scan_modules
 from netpart.netlist import (
     MAX_PINS,
     CellFlag,
@@ -187,12 +187,19 @@ class _Flattener:
             for instance in module.instances:
                 child = self.modules.get(instance.type)
                 if child is None:
-                    self._add_cell(scope, instance, path_index)
+                    try:
+                        self._add_cell(scope, instance, path_index)
+                    except InputError:
+                        # read again by the grammar, which knows where in the statement the fault stands
+                        self._add_cell(scope, parse_instance(module.file, instance), path_index)
                 else:
                     path = prefix + instance.name
                     self.instance_paths.append(path)
                     self.instance_parents.append(path_index)
-                    ports = self._bind(scope, instance, child)
+                    try:
+                        ports = self._bind(scope, instance, child)
+                    except InputError:
+                        ports = self._bind(scope, parse_instance(module.file, instance), child)
                     children.append((child, path + "/", len(self.instance_paths) - 1, ports))
             pending.extend(reversed(children))
 

@@ -13,7 +13,7 @@ from netpart.formats.source import SourceText
 from netpart.formats.verilog_grammar import IDENTIFIER, KEYWORDS, MAX_NESTING, STATEMENT, plain_name
 from netpart.netlist import InputError, LimitError
 
-__all__ = ["MAX_NAME_LENGTH", "Instance", "Module", "scan_modules"]
+__all__ = ["MAX_NAME_LENGTH", "Instance", "Module", "parse_instance", "scan_modules"]
 
 MAX_NAME_LENGTH = 65_536
 """Characters in one identifier."""
@@ -158,6 +158,13 @@ def scan_modules(source: SourceText, *, grammar_only: bool = False) -> list[Modu
     if module is not None:
         raise file.error(len(text), f"endmodule of module {module.name}")
     return modules
+
+
+def parse_instance(file: TextFile, instance: Instance) -> Instance:
+    """The same instance as the grammar reads it, with the place of everything."""
+    end = _TO_SEMICOLON.match(file.text, instance.base).end() - 1  # type: ignore[union-attr]
+    name, connections, offset = _parse(file, instance.base, end)[2][0]
+    return Instance(instance.type, name, instance.base + offset, instance.base, None, connections)
 
 
 def _parse(file: TextFile, start: int, end: int) -> Any:
