@@ -18,9 +18,10 @@ from netpart.netlist.errors import (
 from netpart.netlist.model import MAX_PINS, CellFlag, Direction, IgnoredNet, Netlist, Source
 from netpart.netlist.names import Names
 from netpart.netlist.partition import OBJECTIVES, Partition, spans
+from netpart.netlist.rent import RentFit, fit_rent
 from netpart.netlist.restrict import restrict
 from netpart.netlist.rules import FREE, AreaWindow, Rules
-from netpart.netlist.survey import Survey, survey
+from netpart.netlist.survey import Oddity, Survey, survey
 
 __all__ = [
     "FREE",
@@ -42,13 +43,16 @@ __all__ = [
     "Netlist",
     "NetlistError",
     "NetpartError",
+    "Oddity",
     "Partition",
+    "RentFit",
     "Rules",
     "Source",
     "Survey",
     "UnknownNameError",
     "UsageError",
     "ValueRangeError",
+    "fit_rent",
     "restrict",
     "spans",
     "survey",

@@ -1,23 +1,27 @@
-"""Survey: what is in a netlist, in figures."""
+"""Survey: what is in a netlist, in figures that can be checked before anything is divided."""
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Iterable
+from dataclasses import dataclass, fields
 from typing import Any, NamedTuple
 
 import numpy as np
-import scipy.sparse as sparse
-import scipy.sparse.csgraph
-import scipy.stats
 from numpy.typing import NDArray
+from scipy.sparse import csr_array
+from scipy.sparse.csgraph import connected_components
 
-from netpart.netlist.model import CellFlag, Direction, Netlist
+from netpart.netlist.model import CellFlag, Direction, IgnoredNet, Netlist
+from netpart.netlist.names import Names
+from netpart.netlist.rent import RentFit, fit_rent
 
-__all__ = ["ModuleRow", "RentFit", "Survey", "TypeRow", "survey"]
+__all__ = ["FanOutRow", "ModuleRow", "Oddity", "Survey", "TypeRow", "survey"]
 
-_LARGE_NET = 100
-_TOP_TYPES = 12
-_RENT_SEEDS = 24
+_WIDE_NET = 100
+_MAX_TYPES = 12
+_MAX_MODULES = 100
+_MAX_DEPTH = 2
+_MAX_COMPONENTS = 20
 
 
 class TypeRow(NamedTuple):
@@ -37,18 +41,61 @@ class ModuleRow(NamedTuple):
     area: float
 
 
-class RentFit(NamedTuple):
-    """T = t g^p fitted to regions of the netlist: exponent p, its standard error, t, and how many regions."""
+class FanOutRow(NamedTuple):
+    """How many nets touch `low` to `high` cells."""
 
-    exponent: float
-    standard_error: float
-    terminals_per_cell: float
-    num_regions: int
+    low: int
+    high: int
+    nets: int
 
 
-@dataclass(frozen=True, slots=True, eq=False)
+class Oddity(NamedTuple):
+    """Something that is legal but worth a look: how often it occurs, and the first few names."""
+
+    what: str
+    number: int
+    examples: tuple[str, ...]
+
+    def __str__(self) -> str:
+        more = ", …" if self.number > len(self.examples) else ""
+        return f"{self.what}: {self.number:,} ({', '.join(self.examples)}{more})"
+
+
+@dataclass(frozen=True, slots=True)
 class Survey:
-    """Figures of a netlist; `fan_out` counts nets by their number of cells, in doubling bins."""
+    """What is in a netlist.
+
+    Attributes
+    ----------
+    cells, nets, pins : int
+        n with ports, m, and the pins as they stand in the file.
+    ports, macros, sequential, fixed : int
+        Cells with the flag.
+    area, mean_area, median_area : float
+        All cells together; mean and median over the cells that are no ports.
+    largest_cell : str
+    largest_area : float
+    types : tuple of TypeRow
+        The types that take the most area, falling; ports have none.
+    common_types : tuple of TypeRow
+        The types with the most cells, falling.
+    num_types : int
+    fan_out : tuple of FanOutRow
+        Nets by the number of cells they touch: 0, 1, 2, 3, 4, then 5 to 8, 9 to 16 and so on; empty rows left out.
+    components : tuple of int
+        Cells of each connected component, falling; a cell without nets is one.
+    modules : tuple of ModuleRow
+        Module instances down to depth two, each before what lies in it, larger areas first; the hundred largest where
+        there are more.
+    num_modules : int
+        All module instances, the top included.
+    rent : RentFit or None
+    ignored_nets : tuple of IgnoredNet
+    notes : tuple of str
+        What the reader noted.
+    oddities : tuple of Oddity
+        Only what does occur.
+    """
 
     cells: int
     nets: int
@@ -58,185 +105,150 @@ class Survey:
     sequential: int
     fixed: int
     area: float
+    mean_area: float
+    median_area: float
     largest_cell: str
     largest_area: float
     types: tuple[TypeRow, ...]
+    common_types: tuple[TypeRow, ...]
     num_types: int
-    fan_out: tuple[tuple[int, int, int], ...]
+    fan_out: tuple[FanOutRow, ...]
     components: tuple[int, ...]
     modules: tuple[ModuleRow, ...]
     num_modules: int
     rent: RentFit | None
-    oddities: tuple[str, ...]
+    ignored_nets: tuple[IgnoredNet, ...]
+    notes: tuple[str, ...]
+    oddities: tuple[Oddity, ...]
 
     def to_dict(self) -> dict[str, Any]:
-        """For JSON."""
-        return {
-            "cells": self.cells,
-            "nets": self.nets,
-            "pins": self.pins,
-            "ports": self.ports,
-            "macros": self.macros,
-            "sequential": self.sequential,
-            "fixed": self.fixed,
-            "area": self.area,
-            "largest_cell": {"name": self.largest_cell, "area": self.largest_area},
-            "types": [row._asdict() for row in self.types],
-            "num_types": self.num_types,
-            "fan_out": [{"from": low, "to": high, "nets": nets} for low, high, nets in self.fan_out],
-            "components": list(self.components[:20]),
+        """Plain values for JSON; of the components, the sizes of the 20 largest and the number of all."""
+        values: dict[str, Any] = {entry.name: getattr(self, entry.name) for entry in fields(self)}
+        for name in ("types", "common_types", "fan_out", "modules", "ignored_nets", "oddities"):
+            values[name] = [row._asdict() for row in values[name]]
+        return values | {
+            "components": list(self.components[:_MAX_COMPONENTS]),
             "num_components": len(self.components),
-            "modules": [row._asdict() for row in self.modules],
-            "num_modules": self.num_modules,
-            "rent": None if self.rent is None else self.rent._asdict(),
-            "oddities": list(self.oddities),
+            "largest_share": self.largest_area / self.area if self.area else 0.0,
+            "rent": None if self.rent is None else self.rent.to_dict(),
+            "notes": list(self.notes),
         }
 
 
 def survey(netlist: Netlist) -> Survey:
-    """Count everything; O(n + p)."""
-    areas = netlist.areas
-    largest = int(np.argmax(areas))
-    type_cells = np.bincount(netlist.cell_types, minlength=len(netlist.type_names))
-    type_areas = np.bincount(netlist.cell_types, areas, len(netlist.type_names))
-    named = [i for i in np.lexsort((-type_cells, -type_areas)).tolist() if netlist.type_names[i] and type_cells[i]]
+    """Count what is in a netlist, in O(n + p) and a few sorts."""
+    is_cell = ~netlist.has_flag(CellFlag.PORT)
+    areas = netlist.areas[is_cell]
+    largest = int(np.argmax(netlist.areas))
+    types = _types(netlist, is_cell)
     return Survey(
         cells=netlist.num_cells,
         nets=netlist.num_nets,
-        pins=int(netlist.net_pins.sum()),
+        pins=int(netlist.net_pins.sum(dtype=np.int64)),
         ports=int(netlist.has_flag(CellFlag.PORT).sum()),
         macros=int(netlist.has_flag(CellFlag.MACRO).sum()),
         sequential=int(netlist.has_flag(CellFlag.SEQUENTIAL).sum()),
         fixed=int(netlist.has_flag(CellFlag.FIXED).sum()),
         area=netlist.total_area,
+        mean_area=float(areas.mean()) if len(areas) else 0.0,
+        median_area=float(np.median(areas)) if len(areas) else 0.0,
         largest_cell=netlist.cell_names[largest],
-        largest_area=float(areas[largest]),
-        types=tuple(TypeRow(netlist.type_names[i], int(type_cells[i]), float(type_areas[i])) for i in named[:_TOP_TYPES]),
-        num_types=len(named),
+        largest_area=float(netlist.areas[largest]),
+        types=tuple(sorted(types, key=lambda row: (-row.area, -row.cells, row.type))[:_MAX_TYPES]),
+        common_types=tuple(sorted(types, key=lambda row: (-row.cells, -row.area, row.type))[:_MAX_TYPES]),
+        num_types=len(types),
         fan_out=_fan_out(netlist.net_sizes),
         components=_components(netlist),
         modules=_modules(netlist),
-        num_modules=len(netlist.module_names),
+        num_modules=len(netlist.module_parents),
         rent=fit_rent(netlist),
+        ignored_nets=netlist.ignored_nets,
+        notes=netlist.notes,
         oddities=tuple(_oddities(netlist)),
     )
 
 
-def fit_rent(netlist: Netlist) -> RentFit | None:
-    """Rent's rule T = t g^p (Landman & Russo, "On a pin versus block relationship", IEEE Trans. Computers C-20, 1971).
-
-    Regions of g = 8, 16, 32, … cells up to a quarter of the netlist grow breadth-first from evenly spaced cells, over
-    nets of up to 20 cells; T counts the nets between a region and the rest. The line is fitted by least squares to the
-    mean log T of each size. A partitioner's blocks have fewer terminals than grown regions, so p is on the high side.
-    """
-    size = netlist.num_cells
-    sizes = [2**power for power in range(3, 40) if 2**power <= size // 4]
-    if len(sizes) < 3:
-        return None
-    walked = netlist.net_sizes <= 20
-    points: dict[int, list[float]] = {region: [] for region in sizes}
-    for seed in np.linspace(0, size - 1, _RENT_SEEDS).astype(np.int64).tolist():
-        order = _grow(netlist, int(seed), min(sizes[-1], 1 << 14), walked)
-        for region in sizes:
-            if region <= len(order):
-                inside = np.zeros(size, np.bool_)
-                inside[order[:region]] = True
-                touched = np.unique(np.concatenate([netlist.nets_of(cell) for cell in order[:region].tolist()]))
-                lengths = netlist.net_sizes[touched]
-                pins = _gather(netlist.net_offsets[touched], lengths)
-                held = np.add.reduceat(inside[netlist.net_cells[pins]], np.cumsum(lengths) - lengths)
-                terminals = int(np.sum(held < lengths))
-                if terminals:
-                    points[region].append(float(np.log(terminals)))
-    fitted = [(np.log(region), np.mean(logs)) for region, logs in points.items() if len(logs) >= 3]
-    if len(fitted) < 3:
-        return None
-    line = scipy.stats.linregress(*zip(*fitted, strict=True))
-    return RentFit(float(line.slope), float(line.stderr), float(np.exp(line.intercept)), sum(map(len, points.values())))
+def _types(netlist: Netlist, is_cell: NDArray[np.bool_]) -> list[TypeRow]:
+    kinds, num_types = netlist.cell_types[is_cell], len(netlist.type_names)
+    counts = np.bincount(kinds, minlength=num_types).tolist()
+    areas = np.bincount(kinds, netlist.areas[is_cell], num_types).tolist()
+    rows = map(TypeRow, netlist.type_names, counts, areas)
+    return [row for row in rows if row.type and row.cells]
 
 
-def _grow(netlist: Netlist, seed: int, wanted: int, walked: NDArray[np.bool_]) -> NDArray[np.int64]:
-    """Cells in breadth-first order from a seed, level by level, ascending within a level."""
-    seen = np.zeros(netlist.num_cells, np.bool_)
-    seen[seed] = True
-    frontier = np.array([seed], np.int64)
-    levels = [frontier]
-    count = 1
-    while len(frontier) and count < wanted:
-        lengths = np.diff(netlist.cell_offsets)[frontier]
-        nets = np.unique(netlist.cell_nets[_gather(netlist.cell_offsets[frontier], lengths)])
-        nets = nets[walked[nets]]
-        found = np.unique(netlist.net_cells[_gather(netlist.net_offsets[nets], netlist.net_sizes[nets])])
-        frontier = found[~seen[found]].astype(np.int64)
-        seen[frontier] = True
-        levels.append(frontier)
-        count += len(frontier)
-    return np.concatenate(levels)
-
-
-def _gather(starts: NDArray[np.int64], lengths: NDArray[np.int64]) -> NDArray[np.int64]:
-    """The indices starts[i], …, starts[i] + lengths[i] − 1 for all i, one after the other."""
-    ends = np.cumsum(lengths)
-    return np.arange(int(ends[-1]) if len(ends) else 0) + np.repeat(starts - (ends - lengths), lengths)
-
-
-def _fan_out(sizes: NDArray[np.int64]) -> tuple[tuple[int, int, int], ...]:
-    rows = []
-    low, high = 0, 1
-    while low <= int(sizes.max(initial=0)):
-        count = int(np.sum((sizes >= low) & (sizes <= high)))
-        if count:
-            rows.append((low, high, count))
-        low, high = high + 1, max(2 * high, high + 1)
-    return tuple(rows)
+def _fan_out(sizes: NDArray[np.int64]) -> tuple[FanOutRow, ...]:
+    bounds = [(i, i) for i in range(5)]
+    while bounds[-1][1] < sizes.max(initial=0):
+        bounds.append((bounds[-1][1] + 1, 2 * bounds[-1][1]))
+    counts = np.histogram(sizes, [low for low, _ in bounds] + [bounds[-1][1] + 1])[0].tolist()
+    return tuple(FanOutRow(low, high, count) for (low, high), count in zip(bounds, counts, strict=True) if count)
 
 
 def _components(netlist: Netlist) -> tuple[int, ...]:
-    """Cells of each connected part, the largest first."""
-    shape = (netlist.num_nets, netlist.num_cells)
-    holds = sparse.csr_array((np.ones(netlist.num_pins, np.int8), netlist.net_cells, netlist.net_offsets), shape=shape)
-    joined = sparse.block_array([[None, holds.T], [holds, None]], format="csr")
-    _, labels = scipy.sparse.csgraph.connected_components(joined, directed=False)
-    sizes = np.bincount(labels[: netlist.num_cells])
+    """Cells per connected component, falling: cells and nets are the vertices of one graph."""
+    num_cells, size = netlist.num_cells, netlist.num_cells + netlist.num_nets
+    ends = np.concatenate((netlist.cell_offsets, np.full(netlist.num_nets, netlist.num_pins)))
+    graph = csr_array((np.ones(netlist.num_pins, np.int8), netlist.cell_nets + np.int32(num_cells), ends), (size, size))
+    labels = connected_components(graph, directed=False)[1]
+    sizes = np.bincount(labels[:num_cells])
     return tuple(sorted(sizes[sizes > 0].tolist(), reverse=True))
 
 
 def _modules(netlist: Netlist) -> tuple[ModuleRow, ...]:
-    """Module instances down to depth 2, each with all that lies below it."""
-    count = len(netlist.module_names)
-    cells = np.bincount(netlist.cell_modules, minlength=count).astype(np.float64)
-    areas = np.bincount(netlist.cell_modules, netlist.areas, count)
-    depths = np.zeros(count, np.int64)
     parents = netlist.module_parents.tolist()
-    for module in range(1, count):
+    depths, shown_as = [0] * len(parents), list(range(len(parents)))
+    for module in range(1, len(parents)):
         depths[module] = depths[parents[module]] + 1
-    for module in range(count - 1, 0, -1):
-        cells[parents[module]] += cells[module]
-        areas[parents[module]] += areas[module]
-    shown = [module for module in range(count) if depths[module] <= 2]
-    paths = {module: netlist.module_names[module] for module in shown}
-    shown.sort(key=lambda module: paths[module].split("/"))
-    return tuple(ModuleRow(paths[module], int(depths[module]), int(cells[module]), float(areas[module])) for module in shown)
+        if depths[module] > _MAX_DEPTH:
+            shown_as[module] = shown_as[parents[module]]
+    place = np.array(shown_as)[netlist.cell_modules]
+    cells = np.bincount(place, minlength=len(parents)).tolist()
+    areas = np.bincount(place, netlist.areas, len(parents)).tolist()
+    children: dict[int, list[int]] = {}
+    for module in range(len(parents) - 1, 0, -1):
+        if shown_as[module] == module:
+            cells[parents[module]] += cells[module]
+            areas[parents[module]] += areas[module]
+            children.setdefault(parents[module], []).append(module)
+
+    def rank(module: int) -> tuple[float, int, int]:
+        return -areas[module], depths[module], module
+
+    kept = set(sorted((module for module, shown in enumerate(shown_as) if shown == module), key=rank)[:_MAX_MODULES])
+    rows: list[ModuleRow] = []
+    stack = [0]
+    while stack:
+        module = stack.pop()
+        if module in kept:
+            rows.append(ModuleRow(netlist.module_names[module], depths[module], cells[module], areas[module]))
+            stack += sorted(children.get(module, ()), key=rank, reverse=True)
+    return tuple(rows)
 
 
-def _oddities(netlist: Netlist) -> list[str]:
+def _oddities(netlist: Netlist) -> Iterable[Oddity]:
     sizes = netlist.net_sizes
-    found = []
-
-    def tell(count: int, what: str) -> None:
-        if count:
-            found.append(f"{count:,} {what}")
-
-    tell(int(np.sum(sizes == 1)), "nets with a single cell")
-    tell(int(np.sum(sizes == 0)), "nets without cells")
-    tell(int(np.sum(np.diff(netlist.cell_offsets) == 0)), "cells without nets")
-    tell(int(np.sum(sizes > _LARGE_NET)), f"nets with more than {_LARGE_NET} cells")
-    known = netlist.pin_directions != Direction.UNKNOWN
     nets = np.repeat(np.arange(netlist.num_nets), sizes)
-    fully_known = np.bincount(nets, ~known, netlist.num_nets) == 0
-    drivers = np.bincount(nets, (netlist.pin_directions & Direction.OUTPUT) != 0, netlist.num_nets)
-    only_outputs = np.bincount(nets, netlist.pin_directions == Direction.OUTPUT, netlist.num_nets)
-    tell(int(np.sum(fully_known & (drivers == 0) & (sizes > 0))), "nets without a driver")
-    tell(int(np.sum(fully_known & (only_outputs > 1))), "nets with several drivers")
-    tell(int(np.sum((netlist.areas == 0) & ~netlist.has_flag(CellFlag.PORT))), "cells of area 0 that are no ports")
-    return found
+
+    def count_pins(chosen: NDArray[np.bool_]) -> NDArray[np.int64]:
+        return np.bincount(nets[chosen], minlength=netlist.num_nets)
+
+    directions = netlist.pin_directions
+    all_known = (count_pins(directions != Direction.UNKNOWN) == sizes) & (sizes > 0)
+    can_drive = count_pins((directions & Direction.OUTPUT) != 0)
+    drives = count_pins(directions == Direction.OUTPUT)
+    no_area = (netlist.areas == 0) & ~netlist.has_flag(CellFlag.PORT)
+    for what, mask, names in (
+        ("nets without pins", sizes == 0, netlist.net_names),
+        ("nets on one cell only", sizes == 1, netlist.net_names),
+        ("nets without a driver", all_known & (can_drive == 0), netlist.net_names),
+        ("nets with several drivers", drives > 1, netlist.net_names),
+        (f"nets on more than {_WIDE_NET} cells", sizes > _WIDE_NET, netlist.net_names),
+        ("cells without nets", np.diff(netlist.cell_offsets) == 0, netlist.cell_names),
+        ("cells of area 0 that are no ports", no_area, netlist.cell_names),
+    ):
+        if mask.any():
+            yield Oddity(what, int(mask.sum()), _examples(names, mask))
+
+
+def _examples(names: Names, mask: NDArray[np.bool_]) -> tuple[str, ...]:
+    return tuple(names[i] for i in np.flatnonzero(mask)[:3].tolist())

@@ -85,7 +85,7 @@ def show_survey(
         )
     _section(console, figures)
     console.print()
-    print_notes(console, found.oddities, "oddity", "yellow")
+    print_notes(console, map(str, found.oddities), "oddity", "yellow")
     print_notes(console, [*netlist.notes, *warnings], "note", "yellow")
     for net in netlist.ignored_nets[:10]:
         print_notes(console, [f"{net.name} is left out of the cut ({net.reason}, {net.num_pins:,} pins)"], "net", "yellow")

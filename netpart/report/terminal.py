@@ -190,7 +190,7 @@ def table(*headings: str, right: Iterable[int]) -> Table:
 def print_notes(console: Console, notes: Iterable[str], label: str, style: str) -> None:
     """A line a note."""
     for note in notes:
-        console.print(Text(f"{label}: ", style=style).append(plain(note), style="default not bold"))
+        console.print(Text.assemble((f"{label}: ", style), plain(note)))
 
 
 def plain(text: str) -> Text:
