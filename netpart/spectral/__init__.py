@@ -1,6 +1,7 @@
 """Eigenpairs of netlists' graphs, the sweep cut, conductance and the Cheeger bracket."""
 
 from netpart.spectral.eigen import Eigenpair, second_eigenpair
+from netpart.spectral.lanczos import find_smallest
 from netpart.spectral.spectrum import Spectrum, find_components, find_spectrum
 from netpart.spectral.sweep import Profile, legal_seed, sweep_profile
 
@@ -9,6 +10,7 @@ __all__ = [
     "Profile",
     "Spectrum",
     "find_components",
+    "find_smallest",
     "find_spectrum",
     "legal_seed",
     "second_eigenpair",
