@@ -124,9 +124,9 @@ def _read_header(text: SourceText) -> _Header:
         end = line.end()
         if values[-1] > MAX_PINS:
             raise IndexOverflowError(f"{text.path}: {what} is {values[-1]:,}; at most {MAX_PINS:,} can be counted")
-        if values[-1] > len(text.data) and what != "the pad offset":  # so that a false count claims no memory
-            raise text.error(line.start(), f"{what}, which the file has room for", _shown(word))
     _, pins, nets, modules, pad_offset = values
+    if modules > len(text.data):  # so that a false count claims no memory
+        raise text.error(_find_line(text.data, 0, 3), "no more modules than the file has room for", str(modules))
     return _Header(pins, nets, modules, pad_offset, end)
 
 
