@@ -20,7 +20,7 @@ from netpart.cli.options import (
 )
 from netpart.formats import read_assignment
 from netpart.netlist import InputError, Rules
-from netpart.report import SCHEMA_NAME, audit, dump_json, rules_of_record, show_audit
+from netpart.report import SCHEMA_NAME, AuditReport, Finding, audit, dump_json, rules_of_record, show_audit
 
 __all__ = ["NAME", "SUMMARY", "add_options", "run"]
 
@@ -47,14 +47,16 @@ def run(arguments: argparse.Namespace) -> int:
     record = _find_record(arguments)
     rules = _complete_from_record(arguments, record)
     netlist = read_netlist(arguments)
-    rows = read_assignment(arguments.assignment)
-    report = audit(
-        netlist,
-        [(cell, block) for cell, block, _ in rows],
-        rules,
-        record=record,
-        assignment_bytes=Path(arguments.assignment).read_bytes(),
-    )
+    try:
+        rows = read_assignment(arguments.assignment)
+    except InputError as fault:
+        if record is None or not Path(arguments.assignment).is_file():
+            raise
+        report = AuditReport((Finding("the assignment is the one of the record", "readable", str(fault), False),))
+    else:
+        content = Path(arguments.assignment).read_bytes()
+        pairs = [(cell, block) for cell, block, _ in rows]
+        report = audit(netlist, pairs, rules, record=record, assignment_bytes=content)
     if arguments.json:
         sys.stdout.write(dump_json(report.to_dict()).decode())
     elif not arguments.quiet:

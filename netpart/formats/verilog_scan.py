@@ -30,7 +30,7 @@ class Module:
     ports : dict of name to direction, in the order of the header; None until a declaration says which.
     nets : dict of name to range, or None for a scalar.
     supplies : set of names declared supply0 or supply1.
-    instances : list of Instance
+    instances : list of Instance, with their names in `instance_names`.
     assignments : list of (left, right, base)
         Expressions as the grammar gives them; `base` is the offset of their statement.
     """
@@ -42,6 +42,7 @@ class Module:
     nets: dict[str, Range | None] = field(default_factory=dict)
     supplies: set[str] = field(default_factory=set)
     instances: list[Instance] = field(default_factory=list)
+    instance_names: set[str] = field(default_factory=set)
     assignments: list[tuple[Any, Any, int]] = field(default_factory=list)
 
 
@@ -117,8 +118,8 @@ def scan_modules(source: SourceText, *, grammar_only: bool = False) -> list[Modu
             match = _FAST_INSTANCE.match(text, at)
             if match is not None:
                 kind, name, pins = match.groups()
-                module.instances.append(
-                    Instance(plain_name(kind), plain_name(name), match.start(2), at, _FAST_PIN.findall(pins))
+                _instantiate(
+                    module, Instance(plain_name(kind), plain_name(name), match.start(2), at, _FAST_PIN.findall(pins))
                 )
                 at = match.end()
                 continue
@@ -215,7 +216,15 @@ def _take(module: Module, parsed: Any, at: int) -> None:
         module.assignments.extend((left, right, at) for left, right in parsed[1])
     elif kind == "instances":
         for name, connections, offset in parsed[2]:
-            module.instances.append(Instance(parsed[1], name, at + offset, at, None, connections))
+            _instantiate(module, Instance(parsed[1], name, at + offset, at, None, connections))
+
+
+def _instantiate(module: Module, instance: Instance) -> None:
+    if instance.name:
+        if instance.name in module.instance_names:
+            raise module.file.error(instance.offset, "different instance names", f"{instance.name!r} again")
+        module.instance_names.add(instance.name)
+    module.instances.append(instance)
 
 
 def _declare(module: Module, direction: str | None, net_type: str, bounds: Range | None, entries: Any) -> None:

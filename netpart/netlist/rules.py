@@ -148,7 +148,7 @@ class Rules:
         largest = int(np.argmax(netlist.areas))
         area = float(netlist.areas[largest])
         if area > window.upper.max() + slack:
-            needed = area / (float(max(self.shares)) * total) - 1
+            needed = Fraction(area) / (max(self.shares) * Fraction(total)) - 1
             raise InfeasibleError(
                 f"cell {netlist.cell_names[largest]!r} has area {area:.6g} of {total:.6g} in all, but no block may "
                 f"hold more than {window.upper.max():.6g}; "

@@ -15,6 +15,7 @@ TIE_RULES = ("newest", "oldest", "random")
 
 _MAX_REACH = 1 << 14
 _WALKED_NET_SIZE = 50
+_USUAL_CELL = 4.0
 
 
 class Bisection:
@@ -69,6 +70,10 @@ class Bisection:
         whole = degree == 0 or (degree <= _MAX_REACH and bool(np.all(netlist.net_weights == np.floor(netlist.net_weights))))
         self._reach = max(int(degree), 1) if whole else _MAX_REACH
         self._scale = 1.0 if whole else _MAX_REACH / degree
+        # A window too narrow for a single cell to move within it would stop every pass at once.
+        width = float(np.min(window.upper - window.lower))
+        usual = min(float(netlist.areas.max()), _USUAL_CELL * float(netlist.areas.mean()))
+        self._margin = max(usual - width / 2, 0.0)
         self._arrays = (*nets, netlist.cell_offsets, netlist.cell_nets, netlist.net_weights, netlist.areas)
         self._moved = np.empty(num_cells, np.int32)
         self._touched = np.empty(num_cells, np.int32)
@@ -107,6 +112,7 @@ class Bisection:
                 self._movable,
                 self.window.lower,
                 self.window.upper,
+                self._margin,
                 self.blocks,
                 self._counts,
                 self._gains,

@@ -237,6 +237,7 @@ def move_pass(
     movable,
     lower,
     upper,
+    margin,
     side,
     counts,
     gains,
@@ -259,6 +260,7 @@ def move_pass(
 ):
     """One pass: move cells one by one, best gain first, each at most once; the caller rolls back to the best prefix.
 
+    Moves may leave the window by `margin`; the prefix that is kept leaves it only where nothing better was found.
     `list_of` comes and goes as all −1, `is_touched` as all False. A gain g stands in bucket
     ``reach + floor(g * scale)``, held within the 2 `reach` + 1 buckets of its side.
 
@@ -338,7 +340,7 @@ def move_pass(
                     looks += 1
                     left = load[s] - areas[cell]
                     right = load[1 - s] + areas[cell]
-                    if left >= lower[s] - tiny and right <= upper[1 - s] + tiny:
+                    if left >= lower[s] - margin - tiny and right <= upper[1 - s] + margin + tiny:
                         found = cell
                         break
                     if violation > tiny:

@@ -46,6 +46,8 @@ def show_split(result: Result, console: Console) -> None:
         console.print()
         console.print(Padding(_spectrum(result.spectral), (0, 0, 0, 2)))
     console.print()
+    if result.status == "interrupted":
+        print_notes(console, [result.message], "interrupted", "bold red")
     print_notes(console, [*result.broken_rules], "broken rule", "bold red")
     print_notes(console, result.warnings, "note", "yellow")
     console.print(Text(CAUTION, style="dim"))

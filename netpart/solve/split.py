@@ -19,6 +19,9 @@ from netpart.solve.starts import seed_number
 __all__ = ["bound", "find_bounds", "split"]
 
 
+_TRIVIAL = Bound("trivial", 0.0, True, 0.0, "no cost is negative")
+
+
 def split(
     netlist: Netlist,
     blocks: int = 2,
@@ -83,7 +86,7 @@ def split(
         )
     partition = Partition.from_blocks(netlist, assigned, rules.num_blocks)
     journal.note_cut("result", 0, partition.cost(objective))
-    bounds = () if budget.exhausted else find_bounds(netlist, rules, objective, journal=journal, budget=budget)
+    bounds = find_bounds(netlist, rules, objective, journal=journal, budget=budget)
     broken = tuple(partition.broken_rules(netlist, rules))
     if budget.stop_requested:
         status, message = "interrupted", "stopped by request; this is the best partition so far"
@@ -114,7 +117,7 @@ def split(
 
 
 def find_bounds(netlist: Netlist, rules: Rules, objective: str, *, journal: Journal, budget: Budget) -> tuple[Bound, ...]:
-    """All verified bounds that can be found, best first; empty where none can."""
+    """All verified bounds that can be found, best first; the trivial 0 where there is no other."""
     if objective not in OBJECTIVES:
         raise UsageError(f"objective: expected one of {', '.join(OBJECTIVES)}, found {objective!r}")
     rules.check_feasible(netlist)
@@ -124,7 +127,7 @@ def find_bounds(netlist: Netlist, rules: Rules, objective: str, *, journal: Jour
             found = spectral_bound(netlist, rules, objective)
         if found is not None:
             bounds.append(found)
-    return tuple(sorted(bounds, key=lambda entry: -entry.value))
+    return tuple(sorted(bounds, key=lambda entry: -entry.value)) or (_TRIVIAL,)
 
 
 def bound(
@@ -142,7 +145,7 @@ def bound(
     """
     rules = rules or Rules.from_request(blocks, tolerance=tolerance)
     found = find_bounds(netlist, rules, objective, journal=Journal(), budget=Budget(time_limit))
-    return found[0] if found else Bound("trivial", 0.0, True, 0.0, "no cost is negative")
+    return found[0]
 
 
 def _describe_ignored(netlist: Netlist) -> str:
