@@ -50,11 +50,11 @@ def test_directions_and_areas() -> None:
 
 
 def test_areas_that_are_not_given() -> None:
-    with pytest.raises(InputError, match="expected areas .*, found none"):
+    with pytest.raises(InputError, match=r"expected areas .*, found none"):
         read_ispd98(text(NET), None, ReadOptions())
     assert read_ispd98(text(NET), None, ReadOptions(default_area=2.0)).areas.tolist() == [2] * 6
     partial = text("a1 7\np2 1\n", "four.are")
-    with pytest.raises(InputError, match="four.are: expected 6 areas, found none for 4 modules, first a0"):
+    with pytest.raises(InputError, match=r"four\.are: expected 6 areas, found none for 4 modules, first a0"):
         read_ispd98(text(NET), partial, ReadOptions())
     assert read_ispd98(text(NET), partial, ReadOptions(default_area=2.0)).areas.tolist() == [2, 7, 2, 2, 2, 1]
 
