@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass, field, replace
 from enum import IntFlag
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -181,7 +181,7 @@ class Netlist:
         ------
         EmptyNetlistError, IndexOverflowError, ValueRangeError, DuplicateNameError, NetlistError
         """
-        offsets = np.ascontiguousarray(net_offsets, dtype=np.int64)
+        offsets = np.array(net_offsets, dtype=np.int64)
         num_nets = len(offsets) - 1
         num_pins = int(offsets[-1]) if len(offsets) else 0
         if num_cells < 1:
@@ -200,6 +200,7 @@ class Netlist:
             np.zeros(num_pins, np.uint8) if pin_directions is None else np.asarray(pin_directions).astype(np.uint8)
         )
 
+        _check_length("pin_directions", raw_directions, num_pins)
         offsets, cells, directions = _unite_pins(offsets, raw_cells, raw_directions, num_cells)
         cell_offsets, cell_nets = transpose(offsets, cells, num_cells)
 
@@ -210,10 +211,18 @@ class Netlist:
         area = np.ones(num_cells) if areas is None else np.array(areas, dtype=np.float64)
         weights = np.ones(num_nets) if net_weights is None else np.array(net_weights, dtype=np.float64)
 
+        flags = np.zeros(num_cells, np.uint8) if cell_flags is None else np.array(cell_flags).astype(np.uint8)
+        parents = np.full(1, -1, np.int32) if module_parents is None else np.array(module_parents, dtype=np.int32)
+
         _check_length("areas", area, num_cells)
         _check_length("net_weights", weights, num_nets)
         _check_length("cell_names", cell_names, num_cells)
         _check_length("net_names", net_names, num_nets)
+        _check_length("cell_flags", flags, num_cells)
+        _check_length("module_parents", parents, len(module_names))
+        enclosing = parents[1:]
+        if parents[:1].tolist() != [-1] or np.any((enclosing < 0) | (enclosing > np.arange(len(enclosing)))):
+            raise NetlistError("module_parents must be -1 for the top and then name an earlier module each")
         bad = np.flatnonzero(~(np.isfinite(area) & (area >= 0)))
         if len(bad):
             raise ValueRangeError(f"cell {cell_names[bad[0]]!r} has area {area[bad[0]]}; expected a finite number ≥ 0")
@@ -230,12 +239,10 @@ class Netlist:
             cell_names=cell_names,
             cell_types=_index_array("cell_types", cell_types, num_cells, len(type_names)),
             resources=area.reshape(1, -1),
-            cell_flags=(np.zeros(num_cells, np.uint8) if cell_flags is None else np.array(cell_flags).astype(np.uint8)),
+            cell_flags=flags,
             cell_modules=_index_array("cell_modules", cell_modules, num_cells, len(module_names)),
             module_names=module_names,
-            module_parents=(
-                np.full(1, -1, np.int32) if module_parents is None else np.array(module_parents, dtype=np.int32)
-            ),
+            module_parents=parents,
             net_names=net_names,
             net_weights=weights,
             net_offsets=offsets,
@@ -372,7 +379,7 @@ def _unite_pins(
     return new_offsets, cells[first], united[by_position]
 
 
-def _check_length(what: str, values: Names | NDArray[np.float64], expected: int) -> None:
+def _check_length(what: str, values: Names | NDArray[Any], expected: int) -> None:
     if len(values) != expected:
         raise NetlistError(f"{what} has {len(values)} entries, expected {expected}")
 

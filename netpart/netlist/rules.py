@@ -152,7 +152,11 @@ class Rules:
             raise InfeasibleError(
                 f"cell {netlist.cell_names[largest]!r} has area {area:.6g} of {total:.6g} in all, but no block may "
                 f"hold more than {window.upper.max():.6g}; "
-                f"a tolerance of {math.ceil(needed * 1000) / 10:g} % would admit it"
+                + (
+                    f"a tolerance of {math.ceil(needed * 1000) / 10:g} % would admit it"
+                    if needed <= 1
+                    else "no tolerance up to 100 % would admit it, but a larger share for one block would"
+                )
             )
         if self.fixed is not None:
             self._check_fixed(netlist, window)

@@ -17,7 +17,8 @@ from netpart.formats import read, read_assignment
 from netpart.netlist import CellFlag, Direction, InputError, Netlist, UsageError
 
 VERILOG = "module top (a, y); input a; output y; wire n; BUF b (.A(a), .Y(n)); FLOP f (.D(n), .Q(y)); endmodule\n"
-LIBERTY = """library (l) { cell (FLOP) { area : 4; ff (Q, QN) { } pin (D) { direction : input; } pin (Q) { direction : output; }
+LIBERTY = """library (l) {
+cell (FLOP) { area : 4; ff (Q, QN) { } pin (D) { direction : input; } pin (Q) { direction : output; }
 } cell (BUF) { area : 1.5; } }"""
 LEF = """VERSION 5.8 ; MACRO BUF CLASS CORE ; SIZE 1 BY 2 ; PIN A DIRECTION INPUT ; END A
 PIN Y DIRECTION OUTPUT ; END Y END BUF
