@@ -16,6 +16,7 @@ __all__ = ["RegionMean", "RentFit", "fit_rent"]
 _NUM_SEEDS = 64
 _SMALLEST, _LARGEST = 4, 1 << 14
 _WIDE_NET = 100
+_MAX_LEVELS = 200
 
 
 @dataclass(frozen=True, slots=True)
@@ -59,11 +60,11 @@ def fit_rent(netlist: Netlist) -> RentFit | None:
     Notes
     -----
     From 64 cells that lie evenly spaced in the order of the file, a region is grown breadth first over nets of at most
-    100 cells. It is measured at 4, 8, 16, … cells, up to an eighth of the netlist and no more than 16384: its
-    terminals T are the nets with cells inside and outside (ports of the top module lie outside always). The means
-    of T over the regions of one size are fitted as log T = log t + p log C by least squares [1]_. Small regions and
-    an eighth at most keep the fit away from the bend at the upper end of Rent's rule. Regions of a good partition have
-    fewer terminals, so that an exponent from placement or partitioning usually is lower. Takes O(64 · 16384) pins.
+    100 cells, and no further than 200 nets from its first cell. It is measured at 4, 8, 16, … cells, up to an eighth of
+    the netlist and no more than 16384: its terminals T are the nets with cells inside and outside, where ports of the
+    top module lie outside always. The means of T over the regions of one size are fitted as log T = log t + p log C by
+    least squares [1]_. Small regions and an eighth at most keep the fit away from the bend at the upper end of Rent's
+    rule. The blocks of a good partition have fewer terminals, so p is on the high side.
 
     References
     ----------
@@ -101,8 +102,10 @@ def _grow(netlist: Netlist, seed: int, size: int, position: NDArray[np.int64]) -
     region = np.array([seed])
     position[seed] = 0
     frontier = region
-    while len(frontier) and len(region) < size:
-        nets = _gather(netlist.cell_offsets, netlist.cell_nets, frontier)
+    for _ in range(_MAX_LEVELS):
+        if not len(frontier) or len(region) == size:
+            break
+        nets = _first_of_each(_gather(netlist.cell_offsets, netlist.cell_nets, frontier))
         cells = _gather(netlist.net_offsets, netlist.net_cells, nets[widths[nets] <= _WIDE_NET])
         cells = _first_of_each(cells[(position[cells] < 0) & (is_port[cells] == 0)])[: size - len(region)]
         position[cells] = np.arange(len(region), len(region) + len(cells))

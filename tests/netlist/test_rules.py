@@ -154,7 +154,7 @@ def test_fixed_cells_that_do_not_fit_the_netlist() -> None:
             Rules.from_request(2, fixed=np.array(wrong, np.int32)).check_feasible(netlist)
 
 
-@given(netlists(max_cells=6, areas="whole"), rules(), st.data())
+@given(netlists(max_cells=6), rules(), st.data())
 def test_what_is_refused_has_no_legal_partition(netlist: Netlist, asked: Rules, data: st.DataObject) -> None:
     """Against trying all partitions; the reverse does not hold, as the proofs are cheap ones."""
     places = st.integers(FREE, asked.num_blocks - 1)
