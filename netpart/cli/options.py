@@ -5,12 +5,14 @@ from __future__ import annotations
 import argparse
 import os
 import re
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from fractions import Fraction
 from typing import Any
 
+from netpart.cli.console import output_console
 from netpart.formats import read
 from netpart.netlist import OBJECTIVES, Netlist, Rules, UsageError
+from netpart.report import show_settings
 from netpart.solve import EFFORTS, Settings
 
 __all__ = [
@@ -83,11 +85,21 @@ def add_rule_options(parser: argparse.ArgumentParser) -> None:
     )
 
 
+class _ListSettings(argparse.Action):
+    def __init__(self, option_strings: Sequence[str], dest: str, **extra: Any) -> None:
+        super().__init__(option_strings, argparse.SUPPRESS, nargs=0, **extra)
+
+    def __call__(self, parser: argparse.ArgumentParser, *_: Any, **__: Any) -> None:
+        show_settings(Settings.describe(), EFFORTS, output_console())
+        parser.exit()
+
+
 def add_engine_options(parser: argparse.ArgumentParser) -> None:
     """How hard to try."""
     group = parser.add_argument_group("engine")
     add_option(group, "--effort", choices=tuple(EFFORTS), help="preset of settings (default: normal)")
     add_option(group, "--settings", metavar="FILE.toml", help="settings by name; see --list-settings")
+    group.add_argument("--list-settings", action=_ListSettings, help="print every setting with its default, and stop")
     group.add_argument("--set", action="append", default=[], metavar="NAME=VALUE", help="one setting by name, over the file")
     add_option(group, "--starts", kind=_whole_from(1), metavar="N", help="independent starts, the best is kept")
     add_option(group, "--seed", kind=_whole_from(0), default=1, metavar="N", help="random seed (default: 1)")

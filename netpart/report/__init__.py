@@ -12,7 +12,7 @@ from netpart.report.record import (
     make_record,
 )
 from netpart.report.survey import show_survey
-from netpart.report.terminal import show_audit, show_bounds, show_split
+from netpart.report.terminal import show_audit, show_bounds, show_settings, show_split
 
 __all__ = [
     "SCHEMA_NAME",
@@ -28,6 +28,7 @@ __all__ = [
     "rules_of_record",
     "show_audit",
     "show_bounds",
+    "show_settings",
     "show_split",
     "show_survey",
     "version",

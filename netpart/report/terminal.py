@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from typing import Any
 
 from rich.console import Console, Group, RenderableType
@@ -15,13 +15,16 @@ from netpart.netlist import Netlist, Rules
 from netpart.report.audit import AuditReport
 from netpart.solve.result import Result
 
-__all__ = ["CAUTION", "plain", "print_notes", "scale", "show_audit", "show_bounds", "show_split", "table"]
+__all__ = ["CAUTION", "plain", "print_notes", "scale", "show_audit", "show_bounds", "show_settings", "show_split", "table"]
 
 CAUTION = (
     "Before this cut is used: clock, reset, power and voltage domains, scan order and timing across the blocks are not "
     "judged here unless a rule says so. Timing, power and test sign-off decide, and isolation of safety-related logic "
     "follows your safety standard and its responsible engineers."
 )
+
+
+_SHORT_NAMES = {"cut-nets": "cut", "connectivity": "connectivity", "terminals": "terminals"}
 
 
 def show_split(result: Result, console: Console) -> None:
@@ -39,7 +42,9 @@ def show_split(result: Result, console: Console) -> None:
     if result.gap is not None and result.best_bound is not None:
         console.print()
         width = min(console.width, 100) - 4
-        console.print(Padding(scale(result.best_bound, result.cost, width), (0, 0, 0, 2)))
+        console.print(
+            Padding(scale(result.best_bound, result.cost, width, _SHORT_NAMES[result.request.objective]), (0, 0, 0, 2))
+        )
     console.print()
     console.print(Padding(_blocks(result), (0, 0, 0, 2)))
     if result.spectral is not None:
@@ -82,7 +87,19 @@ def show_audit(report: AuditReport, console: Console) -> None:
     console.print(Text(f"{report.status}: {report.message}", style=style))
 
 
-def scale(bound: float, cost: float, width: int) -> RenderableType:
+def show_settings(rows: Sequence[tuple[str, str, str]], presets: Mapping[str, Mapping[str, Any]], console: Console) -> None:
+    """Print every setting, its default and its meaning, and what the presets change."""
+    listing = table("setting", "default", "meaning", right=())
+    for name, default, meaning in rows:
+        listing.add_row(name, default, meaning)
+    console.print(listing)
+    console.print()
+    for name, values in presets.items():
+        changed = ", ".join(f"{key} = {value}" for key, value in values.items()) or "the defaults"
+        console.print(Text(f"effort {name}: {changed}"))
+
+
+def scale(bound: float, cost: float, width: int, name: str = "cut") -> RenderableType:
     """Bound and cost on one scale from 0, with the part that no legal partition can reach and the part left open.
 
     Returns
@@ -96,15 +113,15 @@ def scale(bound: float, cost: float, width: int) -> RenderableType:
     bar.append("█" * closed, style="blue")
     bar.append("░" * (inner - closed), style="dark_orange")
     bar.append("▏", style="dim")
-    left, right = f"bound {bound:g}", f"cut {cost:g}"
+    left, right = f"bound {bound:g}", f"{name} {cost:g}"
     at = max(0, min(closed + 1 - len(left), width - len(right) - len(left) - 2))
     figures = Text(" " * at).append(left, style="bold blue")
     figures.append(" " * (width - at - len(left) - len(right))).append(right, style="bold")
     meaning = Text("█", style="blue").append(" proved impossible   ", style="dim")
     if closed < inner:
-        meaning.append("░", style="dark_orange").append(" open: better cuts may exist", style="dim")
+        meaning.append("░", style="dark_orange").append(" open: a better one may exist", style="dim")
     else:
-        meaning.append("the cut is proved optimal", style="bold")
+        meaning.append(f"the {name} is proved optimal", style="bold")
     return Group(figures, bar, meaning)
 
 

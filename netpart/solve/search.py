@@ -43,6 +43,9 @@ def search_bisection(
     ]
     pool = _distinct(run("start", starts))[: settings.pool]
 
+    if settings.levels == "one":
+        return pool[0]
+
     for cycle in range(settings.cycles):
         if budget.exhausted:
             break

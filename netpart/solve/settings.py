@@ -25,7 +25,9 @@ class Settings:
     """All settings of the engine; `describe` prints them with their meaning."""
 
     starts: int = _knob(12, "independent starts", low=1, high=100_000)
-    levels: str = _knob("many", "refine on a hierarchy of clusters, or on the netlist alone", choices=("many", "one"))
+    levels: str = _knob(
+        "many", "refine on a hierarchy of clusters, or on the netlist alone (no cycles then)", choices=("many", "one")
+    )
     seed_from: str = _knob(
         "each",
         "first partition: spectral sweep, random, grown breadth-first, or each of them in turn",
