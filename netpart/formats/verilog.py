@@ -48,7 +48,7 @@ MAX_DEPTH = 1000
 _CONSTANTS = {"0": 0, "1": 1, "x": 2}
 _DIRECTIONS = {"input": Direction.INPUT, "output": Direction.OUTPUT, "inout": Direction.INOUT}
 _AS_PORT_CELL = {"input": Direction.OUTPUT, "output": Direction.INPUT, "inout": Direction.INOUT}
-_HEAD = re.compile(rb"(?:\s|//[^\n]*|/\*.*?\*/|\(\*.*?\*\)|`[^\n]*)*(?:macro)?module[\s\\]", re.DOTALL)
+_HEAD = re.compile(rb"(?:\s|//[^\n]*|/\*.*?\*/|\(\*.*?\*\)|`[^\n]*)*+(?:macro)?module[\s\\]", re.DOTALL)
 
 
 def looks_like_verilog(data: bytes) -> bool:
