@@ -1,139 +1,139 @@
-"""Proof of an eigenvalue bound: a factorisation whose own error is measured, instead of an eigensolver's word.
+"""Proofs about eigenvalues of a netlist's graph: a factorisation whose error is measured, not an eigensolver's word.
 
-Claim: with the clique expansion of bounding weights, G, areas a and total area A, every set S of cells has
+What is to be proved is that an exact matrix K has at most r negative eigenvalues. K itself cannot be stored: its sums and
+products round. Instead a matrix F is stored whose diagonal is smaller than that of K by more than all that rounding plus a
+margin g, so that K ⪰ F + diag(g); then factors L D Lᵀ are computed, and upper bounds s on the row sums of |F − L D Lᵀ|
+(`factor.Factors.measure_error`). If s ≤ g in every row, diag(g) + F − L D Lᵀ is diagonally dominant, hence
 
-    cut_G(S) ≥ λ a(S) a(V∖S)/A − ρ (n + m).                                                       (1)
+    K ⪰ F + diag(g) ⪰ L D Lᵀ,
 
-Let E(λ) be the symmetric matrix over cells, nets and one border vertex
+and by Weyl's monotonicity theorem K has no more negative eigenvalues than L D Lᵀ, which by Sylvester's law of inertia has
+as many as D has negative entries. Nothing depends on how the factors were found. That a floating-point factorisation can
+verify definiteness is due to S. M. Rump, "Verification of positive definiteness", BIT Numerical Mathematics 46, 2006.
 
-    cells × cells:    diag(Σ_{e ∋ v} t_e) − λ diag(a)      nets × nets: diag(|e| t_e)
-    cells × nets:     −t_e where v ∈ e                     cells × border: σ a,  border × border: −σ² A/(2λ)
-
-with star weights t_e = |e| c_e. Suppose E + ρI has at most one negative eigenvalue. Its border entry is negative (if
-ρ < σ² A/(2λ), which is checked), so by Haynsworth's inertia theorem the Schur complement without the border has none: for
-all x on cells and z on nets
-
-    Σ_e t_e Σ_{v∈e} (x_v − z_e)² − λ Σ a_v x_v² + ρ (|x|² + |z|²) + κ (a·x)² ≥ 0     with some κ > 0.
-
-Put x = 1_S − (a(S)/A) 1, so a·x = 0 and |x_v| ≤ 1, and z_e the mean of x over e, so |z_e| ≤ 1. The first sum is then the
-clique form Σ_e c_e j_e (|e| − j_e) = cut_G(S), the second is λ a(S) a(V∖S)/A, and (1) follows.
-
-That E + ρI has at most one negative eigenvalue is shown by L D Lᵀ = E + R with L unit lower triangular and exactly one
-negative entry in the diagonal D: the second smallest eigenvalue of L D Lᵀ is positive (Sylvester), and by Weyl's
-inequality that of E is above −‖R‖₂ ≥ −‖R‖_∞ =: −ρ. R is computed from the factors, and the rounding of that computation
-is bounded by γ_k |L||D||Lᵀ| (Higham, Accuracy and Stability of Numerical Algorithms, 2nd ed. 2002, section 3.5), so
-nothing depends on how the factors were found. The idea of verifying definiteness by a floating-point factorisation is
-that of Rump, "Verification of positive definiteness", BIT 46 (2006).
+The factors are those of the star expansion, which is sparse where the clique expansion is not. Its centre rows form a
+positive diagonal block, and eliminating it leaves the clique expansion; so, by Haynsworth's inertia additivity (Linear
+Algebra and its Applications 1, 1968), both have the same number of negative eigenvalues.
 """
 
 from __future__ import annotations
 
-import math
-from typing import NamedTuple
+from dataclasses import dataclass
 
 import numpy as np
-import scipy.sparse as sparse
+import scipy.sparse as sp
 from numpy.typing import NDArray
-from scipy.sparse.linalg import splu
 
-from netpart.netlist import Netlist
+from netpart.bounds.factor import Elimination, factorize, plan_elimination
+from netpart.expand import CliqueGraph, StarGraph
 
-__all__ = ["EigenProof", "prove_eigenvalue"]
+__all__ = ["StarMatrix", "verify_eigenvalue"]
 
 _UNIT = 2.0**-53
-_MAX_FILL = 40_000_000
 
 
-class EigenProof(NamedTuple):
-    """A proved instance of (1): for every S, cut_G(S) ≥ eigenvalue · a(S) a(V∖S)/A − loss."""
+@dataclass(frozen=True, slots=True, eq=False)
+class StarMatrix:
+    """The Laplacian of a star expansion with a variable diagonal, ready to be factored again and again.
 
-    eigenvalue: float
-    loss: float
+    Attributes
+    ----------
+    laplacian : (n + q, n + q) csc_array
+        Cells first, centres after them. Off-diagonal entries and spoke weights are exact by definition: the graph is the
+        one that these floating-point numbers describe. Its diagonal is the rounded sum of each row.
+    num_cells : int
+        n.
+    longest : int
+        Entries of the longest row.
+    elimination : Elimination
+        In which order to eliminate, and what that costs.
+    """
+
+    laplacian: sp.csc_array
+    num_cells: int
+    longest: int
+    elimination: Elimination
+
+    @classmethod
+    def from_graph(cls, graph: CliqueGraph) -> StarMatrix:
+        """Expand the cliques of a graph, and plan the elimination."""
+        laplacian = StarGraph.from_cliques(graph).laplacian()
+        laplacian.sort_indices()
+        longest = int(np.max(np.diff(laplacian.indptr), initial=0))
+        return cls(laplacian, graph.num_vertices, longest, plan_elimination(laplacian))
+
+    def subtract(self, diagonal: NDArray[np.float64]) -> sp.csc_array:
+        """Laplacian − diag(diagonal) for (n,) or (n + q,) entries, the missing ones being zero; rounded."""
+        size = self.laplacian.shape[0]
+        padded = np.concatenate([diagonal, np.zeros(size - len(diagonal))])
+        return (self.laplacian - sp.diags_array(padded)).tocsc()
+
+    @property
+    def usual_margin(self) -> float:
+        """A margin that the rounding of a factorisation rarely exceeds: it grows with the longest column of the factor."""
+        return 2e-12 * max(self.elimination.longest_column, 8)
+
+    def prove_at_most(self, num_negative: int, load: NDArray[np.float64]) -> bool:
+        """Prove that clique Laplacian − diag(load) has at most so many negative eigenvalues; False says nothing.
+
+        Parameters
+        ----------
+        num_negative : int
+        load : (n,) float64
+            Each entry may be rounded: by up to 8 units in the last place of |load|.
+
+        Notes
+        -----
+        The margin g costs about as much in the load that can be proved. So it is set as small as rounding usually allows,
+        and once more, to what was needed, where that turned out too small.
+        """
+        degrees = self.laplacian.diagonal()
+        padded = np.concatenate([load, np.zeros(len(degrees) - len(load))])
+        # Each row sum is off by at most `longest` roundings, the load by 8, and forming the entry by a few more.
+        margin = max(self.usual_margin, 4 * (self.longest + 16) * _UNIT)
+        for _ in range(2):
+            allowed = margin * (degrees + np.abs(padded))
+            matrix = self.subtract(padded + 2 * allowed)
+            factors = factorize(matrix, self.elimination)
+            if factors is None or factors.num_negative > num_negative:
+                return False
+            error = factors.measure_error(matrix)
+            if np.all(error <= allowed):
+                return True
+            excess = float(np.max(error / np.maximum(allowed, 1e-300)))
+            if not excess < 1e6:
+                return False
+            margin *= 2 * excess
+        return False
 
 
-def prove_eigenvalue(
-    netlist: Netlist, pairs: NDArray[np.float64], areas: NDArray[np.float64], eigenvalue: float
-) -> EigenProof | None:
-    """Try to prove (1) for a claimed eigenvalue; None where the factorisation does not show it.
+def verify_eigenvalue(matrix: StarMatrix, masses: NDArray[np.float64], eigenvalue: float, index: int = 1) -> bool:
+    """Prove that λ_index of L x = λ M x is at least `eigenvalue`, where M = diag(masses) and λ_0 = 0.
 
     Parameters
     ----------
-    netlist : Netlist
-        Connected.
-    pairs : (m,) float64
-        Weight per pair c_e ≥ 0, exact as given.
-    areas : (n,) float64
-        Exact as given.
+    matrix : StarMatrix
+        Of a graph with Laplacian L.
+    masses : (n,) float64
+        a(v) ≥ 0, exact as given, not all zero. Where some are zero, the pencil has infinite eigenvalues.
     eigenvalue : float
         λ > 0.
+    index : int
+        Which eigenvalue, counted from 0 with multiplicity.
+
+    Returns
+    -------
+    bool
+        True is a proof; False says nothing.
+
+    Notes
+    -----
+    If K = L − λ M has at most `index` negative eigenvalues then λ ≤ λ_index: otherwise L x = μ M x would have
+    `index` + 1 eigenvalues μ < λ with M-orthonormal vectors, and xᵀ K x = Σ c_i² (μ_i − λ) < 0 on all their combinations.
+
+    In particular, for index 1, xᵀ L x ≥ λ xᵀ M x for every x with 1ᵀ M x = 0: an x that breaks it would make K negative
+    on the plane of 1 and x, since 1ᵀ K 1 = −λ A < 0 and 1ᵀ K x = −λ 1ᵀ M x = 0. Zero masses do no harm to either.
     """
-    if not (eigenvalue > 0 and math.isfinite(eigenvalue)):
-        return None
-    matrix, entry_error, border = _border_matrix(netlist, pairs, areas, eigenvalue)
-    try:
-        factors = splu(
-            matrix, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.0, options={"SymmetricMode": True, "Equil": False}
-        )
-    except (RuntimeError, MemoryError):
-        return None
-    lower, pivots = factors.L.tocsc(), factors.U.diagonal()
-    if not np.array_equal(factors.perm_r, factors.perm_c) or lower.nnz > _MAX_FILL:
-        return None
-    if int(np.sum(pivots < 0)) != 1 or not np.all(np.isfinite(pivots)) or np.any(pivots == 0):
-        return None
-    if np.any(lower.diagonal() != 1.0) or sparse.triu(lower, k=1).nnz:
-        return None
-    rho = _residual_norm(matrix, lower, pivots, factors.perm_c) + entry_error
-    if not rho < border:
-        return None
-    size = netlist.num_cells + netlist.num_nets
-    return EigenProof(eigenvalue, rho * size * (1 + 8 * _UNIT))
-
-
-def _border_matrix(
-    netlist: Netlist, pairs: NDArray[np.float64], areas: NDArray[np.float64], eigenvalue: float
-) -> tuple[sparse.csc_array, float, float]:
-    """E(λ) in floating point, a bound on the norm of its rounding errors, and |border entry| rounded down."""
-    num_cells, num_nets = netlist.num_cells, netlist.num_nets
-    sizes = netlist.net_sizes
-    star = sizes * pairs
-    nets = np.repeat(np.arange(num_nets), sizes)
-    pin_weights = star[nets]
-    degree = np.bincount(netlist.net_cells, pin_weights, num_cells)
-    total = math.fsum(areas.tolist())
-    scale = math.sqrt(eigenvalue / total)
-    # The factor 2 lifts the constant vector, which would be in the kernel without it. Where λ a, σ a and the sums are
-    # rounded, E differs from the exact matrix by at most (longest sum + 4) units of its entries; the border is exact
-    # for a slightly different A, which the same term covers.
-    corner = scale * scale * (total / (2 * eigenvalue))
-    center = np.where(sizes * star > 0, sizes * star, 1.0)
-    diagonal = np.concatenate([degree - eigenvalue * areas, center, [-corner]])
-    rows = np.concatenate([netlist.net_cells, np.full(num_cells, num_cells + num_nets)])
-    columns = np.concatenate([num_cells + nets, np.arange(num_cells)])
-    values = np.concatenate([-pin_weights, scale * areas])
-    size = num_cells + num_nets + 1
-    upper = sparse.coo_array((values, (rows, columns)), shape=(size, size))
-    matrix = sparse.csc_array(upper + upper.T + sparse.diags_array(diagonal))
-    longest = int(np.max(np.diff(netlist.cell_offsets), initial=0)) + 8
-    magnitude = np.concatenate([degree + eigenvalue * areas, center, [corner]])
-    row_sums = np.asarray(abs(matrix).sum(axis=1)).ravel() + magnitude
-    entry_error = float(row_sums.max()) * longest * _UNIT * 2
-    return matrix, entry_error, corner * (1 - 1e-12)
-
-
-def _residual_norm(
-    matrix: sparse.csc_array, lower: sparse.csc_array, pivots: NDArray[np.float64], order: NDArray[np.int32]
-) -> float:
-    """An upper bound on ‖P E Pᵀ − L D Lᵀ‖_∞."""
-    size = len(pivots)
-    place = np.empty(size, np.int64)
-    place[np.arange(size)] = order
-    coordinates = matrix.tocoo()
-    permuted = sparse.csc_array((coordinates.data, (place[coordinates.row], place[coordinates.col])), shape=matrix.shape)
-    product = lower.multiply(pivots[None, :]).tocsc() @ lower.T
-    residual = float(abs(permuted - product).sum(axis=1).max())
-    absolute = abs(lower)
-    spread = absolute @ (np.abs(pivots) * (absolute.T @ np.ones(size)))
-    terms = int(np.diff(lower.tocsr().indptr).max()) + 8
-    rounding = 2 * terms * _UNIT * (float(spread.max()) + float(abs(permuted).sum(axis=1).max()))
-    return (residual + rounding) * (1 + (size + 8) * _UNIT)
+    if not (np.isfinite(eigenvalue) and eigenvalue > 0 and np.all(np.isfinite(masses) & (masses >= 0))):
+        return False
+    return matrix.prove_at_most(index, eigenvalue * masses)

@@ -19,7 +19,7 @@ def eliminate(matrix: np.ndarray, num_kept: int) -> np.ndarray:
 
 
 def test_one_net_of_three_by_hand() -> None:
-    """Spokes of weight 3 around a centre: eliminating it leaves the triangle with weight 3/3 = 1 (star-triangle transform)."""
+    """Spokes of weight 3 around a centre: eliminating it leaves the triangle with weight 3/3 = 1."""
     star = StarGraph.from_netlist(make_netlist([[0, 1, 2]], 3, weights=[3.0]))
     whole = star.laplacian().toarray()
     assert whole.tolist() == [[3, 0, 0, -3], [0, 3, 0, -3], [0, 0, 3, -3], [-3, -3, -3, 9]]
