@@ -106,6 +106,7 @@ def _hierarchy(problem: Problem, rng: np.random.Generator, keep: Blocks | None) 
         keep=keep,
         coarsest=settings.coarsest,
         ratio=settings.coarsen_ratio,
+        net_power=settings.coarsen_net_power,
         area_power=settings.coarsen_area_power,
         area_cap=settings.coarsen_area_cap,
         max_net_size=settings.coarsen_net_size,

@@ -15,6 +15,7 @@ __all__ = ["search_bisection"]
 
 _START, _CYCLE, _MATE, _CHOICE = range(4)
 _BATCH = 4
+_LEAST_TASKS = 4
 
 
 def search_bisection(
@@ -39,9 +40,9 @@ def search_bisection(
         return run_in_order(tasks, jobs, budget, done)
 
     starts: list[Callable[[], Solution]] = [
-        partial(solve_once, problem, i, stream(_START, i)) for i in range(settings.starts)
+        partial(solve_once, problem, i, stream(_START, i)) for i in range(_affordable(problem, settings.starts))
     ]
-    pool = _distinct(run("start", starts))[: settings.pool]
+    pool = _distinct(run("start", starts))[: _affordable(problem, settings.pool)]
 
     if settings.levels == "one":
         return pool[0]
@@ -55,16 +56,23 @@ def search_bisection(
         improved = run("cycle", tasks)
         pool = _distinct([*improved, *pool[len(improved) :]])
 
-    for first in range(0, settings.recombinations, _BATCH):
+    recombinations = _affordable(problem, settings.recombinations)
+    for first in range(0, recombinations, _BATCH):
         if budget.exhausted or len(pool) < 2:
             break
         choice = stream(_CHOICE, first)
         tasks = []
-        for number in range(first, min(first + _BATCH, settings.recombinations)):
+        for number in range(first, min(first + _BATCH, recombinations)):
             i, j = sorted(choice.choice(len(pool), 2, replace=False).tolist())
             tasks.append(partial(recombine, problem, pool[i], pool[j], stream(_MATE, number)))
         pool = _distinct([*pool, *run("recombine", tasks)])[: max(len(pool), 2)]
     return pool[0]
+
+
+def _affordable(problem: Problem, tasks: int) -> int:
+    """How many tasks of a phase run within the work budget, which counts every pin of the netlist once a task."""
+    pins = max(problem.netlist.num_pins, 1)
+    return min(tasks, max(_LEAST_TASKS, int(problem.settings.work * 1e6 / pins)))
 
 
 def _distinct(solutions: list[Solution]) -> list[Solution]:

@@ -24,7 +24,7 @@ def _knob(default: Any, text: str, *, choices: tuple[str, ...] = (), low: float 
 class Settings:
     """All settings of the engine; `describe` prints them with their meaning."""
 
-    starts: int = _knob(12, "independent starts", low=1, high=100_000)
+    starts: int = _knob(30, "independent starts", low=1, high=100_000)
     levels: str = _knob(
         "many", "refine on a hierarchy of clusters, or on the netlist alone (no cycles then)", choices=("many", "one")
     )
@@ -39,13 +39,15 @@ class Settings:
     stall: int = _knob(100, "moves without improvement after which a pass ends", low=1)
     tie_rule: str = _knob("newest", "which of the cells with equal gain moves first", choices=TIE_RULES)
     coarsest: int = _knob(150, "clusters on the coarsest level", low=2, high=100_000)
-    coarsen_ratio: float = _knob(1.8, "cells per cluster from a level to the next, at most", low=1.1, high=10)
-    coarsen_area_power: float = _knob(0.5, "how much small clusters are preferred", low=0, high=4)
+    coarsen_ratio: float = _knob(3.0, "cells per cluster from a level to the next, at most", low=1.1, high=10)
+    coarsen_net_power: float = _knob(0.7, "how much large nets attract less than small ones", low=0, high=4)
+    coarsen_area_power: float = _knob(0.7, "how much small clusters are preferred", low=0, high=4)
     coarsen_area_cap: float = _knob(4.0, "largest cluster, in shares of total area / coarsest", low=0.5, high=1000)
     coarsen_net_size: int = _knob(40, "nets with more cells don't attract clusters", low=2)
-    pool: int = _knob(4, "solutions that are followed up", low=1, high=1000)
+    pool: int = _knob(8, "solutions that are followed up", low=1, high=1000)
     cycles: int = _knob(2, "times the pool is coarsened within its blocks and improved again", low=0, high=10_000)
-    recombinations: int = _knob(8, "times two solutions of the pool are recombined", low=0, high=100_000)
+    recombinations: int = _knob(24, "times two solutions of the pool are recombined", low=0, high=100_000)
+    work: float = _knob(12.0, "millions of pins after which a phase ends; at least 4 of its tasks run", low=0, high=1e9)
 
     @classmethod
     def from_mapping(cls, values: Mapping[str, Any], base: Settings | None = None, source: str = "settings") -> Settings:
@@ -139,6 +141,6 @@ def _check(knob: Any, value: Any, source: str) -> None:
 EFFORTS: dict[str, dict[str, Any]] = {
     "quick": {"starts": 1, "pool": 1, "cycles": 0, "recombinations": 0},
     "normal": {},
-    "thorough": {"starts": 40, "pool": 8, "cycles": 3, "recombinations": 64},
+    "thorough": {"starts": 80, "pool": 16, "cycles": 3, "recombinations": 120, "work": 120.0},
 }
 """Presets by name: what each sets differently from the defaults of `Settings`."""

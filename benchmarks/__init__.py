@@ -1,0 +1,1 @@
+"""Measurements: cut quality, speed, scale. Ratios within one run on one machine; nothing here asserts a time."""
