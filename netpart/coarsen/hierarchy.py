@@ -13,6 +13,7 @@ from netpart.netlist import FREE, Netlist
 __all__ = ["Hierarchy", "Level", "build_hierarchy", "contract"]
 
 _MIN_SHRINKAGE = 0.95
+_CHUNK = 1024
 
 
 @dataclass(frozen=True, slots=True, eq=False, repr=False)
@@ -72,15 +73,17 @@ def build_hierarchy(
     fixed: NDArray[np.int32] | None = None,
     keep: NDArray[np.int32] | None = None,
     coarsest: int = 150,
-    ratio: float = 1.8,
-    area_power: float = 0.5,
+    ratio: float = 3.0,
+    net_power: float = 0.7,
+    area_power: float = 0.7,
     area_cap: float = 4.0,
     max_net_size: int = 40,
 ) -> Hierarchy:
     """Coarsen by heavy-connectivity clustering.
 
-    Two clusters are rated by Σ w(e)/(|e| − 1) over their common nets, divided by the product of their areas to the
-    power `area_power`. Every cell, in random order, joins the best-rated neighbour, which may be a cluster already.
+    Two clusters are rated by Σ w(e)/(|e| − 1)^`net_power` over their common nets, divided by the product of their areas
+    to the power `area_power`. Every cell, in random order, joins the best-rated neighbour, which may be a cluster
+    already.
 
     Parameters
     ----------
@@ -94,7 +97,11 @@ def build_hierarchy(
     coarsest : int
         Stop at about so many clusters.
     ratio : float
-        A level has at least 1/ratio as many clusters as the one before.
+        A level has at least 1/ratio as many clusters as the one before. Small ratios leave many cells alone while
+        others cluster, which costs quality.
+    net_power : float
+        1 spreads the weight of a net over its pairs of cells, 0 counts nets whatever their size. Between 0.5 and 1 cuts
+        after refinement are clearly smaller than at either end.
     area_power : float
         Above 0, small clusters are joined first.
     area_cap : float
@@ -128,10 +135,11 @@ def build_hierarchy(
             source.areas,
             level.fixed,
             blocks,
-            rng.permutation(size).astype(np.int32),
+            _visiting_order(size, rng),
             max_area,
             max_net_size,
-            area_power,
+            float(net_power),
+            float(area_power),
             max(coarsest, int(size / ratio)),
         )
         if num_clusters > _MIN_SHRINKAGE * size:
@@ -139,6 +147,18 @@ def build_hierarchy(
         level = contract(level, cluster, num_clusters)
         levels.append(level)
     return Hierarchy(tuple(levels))
+
+
+def _visiting_order(size: int, rng: np.random.Generator) -> NDArray[np.int32]:
+    """All cells: chunks of neighbouring numbers in random order, and random order within each.
+
+    Cells of neighbouring numbers share nets, so this finds most of what it needs in the processor's cache: on a million
+    pins clustering is four times as fast as in a fully random order, with the same cuts.
+    """
+    num_chunks = -(-size // _CHUNK)
+    cells = np.arange(num_chunks * _CHUNK, dtype=np.int32).reshape(num_chunks, _CHUNK)
+    order: NDArray[np.int32] = rng.permuted(cells, axis=1)[rng.permutation(num_chunks)].ravel()
+    return order[order < size]
 
 
 def contract(level: Level, cluster: NDArray[np.int32], num_clusters: int) -> Level:

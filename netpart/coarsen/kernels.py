@@ -21,10 +21,13 @@ def cluster_cells(
     order,
     max_area,
     max_net_size,
+    net_power,
     area_power,
     enough,
 ):
     """Join each cell, in the given order, to the neighbouring cluster that it is most heavily connected to.
+
+    A cell that others have joined stays where it is. Ends when `enough` clusters are left.
 
     Returns
     -------
@@ -36,6 +39,15 @@ def cluster_cells(
     leader = np.arange(num_cells).astype(np.int32)  # a cluster is named by one of its cells
     single = np.ones(num_cells, np.bool_)
     area = areas.copy()
+    bulk = np.ones(num_cells)  # area to the power area_power, kept because powers are slow
+    for cell in range(num_cells):
+        if area[cell] > 0.0:
+            bulk[cell] = area[cell] ** area_power
+    pull = np.zeros(len(net_weights))
+    for net in range(len(net_weights)):
+        size = net_offsets[net + 1] - net_offsets[net]
+        if 2 <= size <= max_net_size:
+            pull[net] = net_weights[net] / (size - 1) ** net_power
     pinned = fixed.copy()
     rating = np.zeros(num_cells)
     seen = np.empty(num_cells, np.int32)
@@ -49,30 +61,27 @@ def cluster_cells(
         num_seen = 0
         for at in range(cell_offsets[cell], cell_offsets[cell + 1]):
             net = cell_nets[at]
-            size = net_offsets[net + 1] - net_offsets[net]
-            if size > max_net_size or size < 2:
+            if pull[net] == 0.0:
                 continue
-            share = net_weights[net] / (size - 1)
             for pin in range(net_offsets[net], net_offsets[net + 1]):
                 other = leader[net_cells[pin]]
                 if rating[other] == 0.0:
                     seen[num_seen] = other
                     num_seen += 1
-                rating[other] += share
+                rating[other] += pull[net]
         best = -1
         best_score = 0.0
         for j in range(num_seen):
             other = seen[j]
-            score = rating[other]
+            score = rating[other] / bulk[other]
             rating[other] = 0.0
-            if other == cell or area[other] + area[cell] > max_area or keep[other] != keep[cell]:
+            if score < best_score or other == cell:
+                continue
+            if area[other] + area[cell] > max_area or keep[other] != keep[cell]:
                 continue
             if pinned[other] >= 0 and pinned[cell] >= 0 and pinned[other] != pinned[cell]:
                 continue
-            product = area[other] * area[cell]
-            if product > 0.0 and area_power > 0.0:
-                score /= product**area_power
-            if score > best_score or (score == best_score and single[other] and not single[best]):
+            if score > best_score or (single[other] and not single[best]):
                 best = other
                 best_score = score
         if best >= 0:
@@ -80,6 +89,8 @@ def cluster_cells(
             single[cell] = False
             single[best] = False
             area[best] += area[cell]
+            if area[best] > 0.0:
+                bulk[best] = area[best] ** area_power
             if pinned[best] < 0:
                 pinned[best] = pinned[cell]
             remaining -= 1
