@@ -43,7 +43,8 @@ class Bisection:
 
     Notes
     -----
-    Gains are kept exact for all cells. Setting up costs O(n + p), a pass O(n + pins of the cells that it moves).
+    Counts and gains follow every move, so that a pass costs O(n + m + pins of the nets that it makes or leaves uncut).
+    What a pass takes back is counted anew only if another pass follows.
     """
 
     def __init__(
@@ -63,8 +64,8 @@ class Bisection:
         self._counts = np.empty((netlist.num_nets, 2), np.int32)
         self._gains = np.empty(num_cells)
         nets = (netlist.net_offsets, netlist.net_cells)
-        self.cut = float(kernels.count_sides(*nets, netlist.net_weights, self.blocks, self._counts))
-        degree = kernels.compute_gains(*nets, netlist.net_weights, self.blocks, self._counts, self._gains)
+        self._arrays = (*nets, netlist.cell_offsets, netlist.cell_nets, netlist.net_weights, netlist.areas)
+        self.cut, degree = self._count()
         self.load = np.bincount(self.blocks, netlist.areas, 2).astype(np.float64)
         # Whole weights have a bucket for every gain; others, and very large ones, share buckets, and gains stay exact.
         whole = degree == 0 or (degree <= _MAX_REACH and bool(np.all(netlist.net_weights == np.floor(netlist.net_weights))))
@@ -74,10 +75,17 @@ class Bisection:
         width = float(np.min(window.upper - window.lower))
         usual = min(float(netlist.areas.max()), _USUAL_CELL * float(netlist.areas.mean()))
         self._margin = max(usual - width / 2, 0.0)
-        self._arrays = (*nets, netlist.cell_offsets, netlist.cell_nets, netlist.net_weights, netlist.areas)
         self._moved = np.empty(num_cells, np.int32)
         self._touched = np.empty(num_cells, np.int32)
         self._is_touched = np.zeros(num_cells, np.bool_)
+
+    def _count(self) -> tuple[float, float]:
+        """Counts and gains anew; returns the cut and the largest weighted degree of a cell."""
+        nets = (self.netlist.net_offsets, self.netlist.net_cells, self.netlist.net_weights)
+        cut = float(kernels.count_sides(*nets, self.blocks, self._counts))
+        degree = float(kernels.compute_gains(*nets, self.blocks, self._counts, self._gains))
+        self._exact = True
+        return cut, degree
 
     @property
     def violation(self) -> float:
@@ -106,8 +114,10 @@ class Bisection:
         heads, tails = np.empty(num_lists, np.int32), np.empty(num_lists, np.int32)
         nexts, prevs = np.empty(len(self.blocks), np.int32), np.empty(len(self.blocks), np.int32)
         list_of = np.full(len(self.blocks), -1, np.int32)
-        for done in range(passes):
-            num_moved, best, cut = kernels.move_pass(
+        for done in range(1, passes + 1):
+            if not self._exact:
+                self._count()
+            num_moved, best, self.cut = kernels.move_pass(
                 *self._arrays,
                 self._movable,
                 self.window.lower,
@@ -133,10 +143,10 @@ class Bisection:
                 self._is_touched,
                 self._state,
             )
-            self._take_back(best, num_moved)
-            self.cut = cut
+            last = best == 0 or done == passes
+            self._take_back(best, num_moved, stay_exact=not last)
             if best == 0:
-                return done + 1
+                return done
         return passes
 
     def swap(self, passes: int, stall: int) -> int:
@@ -146,8 +156,10 @@ class Bisection:
         single cell can move.
         """
         shared = np.full(self.netlist.num_nets, -1, np.int32)
-        for done in range(passes):
-            num_moved, best, cut = kernels.swap_pass(
+        for done in range(1, passes + 1):
+            if not self._exact:
+                self._count()
+            num_moved, best, self.cut = kernels.swap_pass(
                 *self._arrays,
                 self._movable,
                 self.window.lower,
@@ -163,17 +175,18 @@ class Bisection:
                 self._is_touched,
                 shared,
             )
-            self._take_back(best, num_moved)
-            self.cut = cut
+            last = best == 0 or done == passes
+            self._take_back(best, num_moved, stay_exact=not last)
             if best == 0:
-                return done + 1
+                return done
         return passes
 
-    def _take_back(self, first: int, last: int) -> None:
-        kernels.apply_moves(
+    def _take_back(self, first: int, last: int, *, stay_exact: bool) -> None:
+        self._exact = kernels.take_back(
             self._moved,
             first,
             last,
+            stay_exact or first == last,
             *self._arrays,
             self.blocks,
             self._counts,

@@ -11,7 +11,7 @@ from __future__ import annotations
 import numpy as np
 from numba import njit
 
-__all__ = ["apply_moves", "compute_gains", "count_sides", "grow_side", "move_pass", "swap_pass"]
+__all__ = ["compute_gains", "count_sides", "grow_side", "move_pass", "swap_pass", "take_back"]
 
 NEWEST, OLDEST, RANDOM = 0, 1, 2
 _LOOKS = 24  # cells that a side may offer in vain before it passes its turn
@@ -129,35 +129,46 @@ def _move(cell, net_offsets, net_cells, cell_offsets, cell_nets, net_weights, si
         if before + after == 0:
             continue
         weight = net_weights[net]
+        if before == 0 or after == 0:  # the net becomes cut, or is no longer cut: every other cell feels it
+            change = weight if before == 0 else -weight
+            if before + after == 1:
+                change += change
+            waiting = before + after
+        else:  # a cell is no longer alone on its side, or now is
+            change = 0.0
+            waiting = (before == 1) + (after == 1)
         for pin in range(net_offsets[net], net_offsets[net + 1]):
             other = net_cells[pin]
             if other == cell:
                 continue
-            change = 0.0
-            if before == 0:
-                change += weight
-            elif before == 1 and side[other] == target:
-                change -= weight
-            if after == 0:
-                change -= weight
-            elif after == 1 and side[other] == source:
-                change += weight
             if change != 0.0:
                 gains[other] += change
-                if not is_touched[other]:
-                    is_touched[other] = True
-                    touched[num_touched] = other
-                    num_touched += 1
+            elif side[other] == target:
+                if before != 1:
+                    continue
+                gains[other] -= weight
+            else:
+                if after != 1:
+                    continue
+                gains[other] += weight
+            if not is_touched[other]:
+                is_touched[other] = True
+                touched[num_touched] = other
+                num_touched += 1
+            waiting -= 1
+            if waiting == 0:
+                break
     side[cell] = target
     gains[cell] = -gains[cell]
     return num_touched
 
 
 @njit(cache=True, nogil=True)
-def apply_moves(
-    cells,
+def take_back(
+    moved,
     first,
     last,
+    stay_exact,
     net_offsets,
     net_cells,
     cell_offsets,
@@ -171,16 +182,37 @@ def apply_moves(
     touched,
     is_touched,
 ):
-    """Move ``cells[first:last]``, last one first."""
+    """Move ``moved[first:last]`` back, the last one first, and return whether counts and gains are still exact.
+
+    With `stay_exact` they are, unless so much is taken back that counting anew costs less.
+    """
+    pins = 0
+    for i in range(first, last):
+        pins += cell_offsets[moved[i] + 1] - cell_offsets[moved[i]]
+    exact = stay_exact and 2 * pins < len(net_cells)
     for i in range(last - 1, first - 1, -1):
-        cell = cells[i]
+        cell = moved[i]
         load[side[cell]] -= areas[cell]
         load[1 - side[cell]] += areas[cell]
-        num_touched = _move(
-            cell, net_offsets, net_cells, cell_offsets, cell_nets, net_weights, side, counts, gains, touched, is_touched
-        )
-        for j in range(num_touched):
-            is_touched[touched[j]] = False
+        if exact:
+            num_touched = _move(
+                cell,
+                net_offsets,
+                net_cells,
+                cell_offsets,
+                cell_nets,
+                net_weights,
+                side,
+                counts,
+                gains,
+                touched,
+                is_touched,
+            )
+            for j in range(num_touched):
+                is_touched[touched[j]] = False
+        else:
+            side[cell] = 1 - side[cell]
+    return exact
 
 
 @njit(cache=True, nogil=True)
@@ -279,20 +311,18 @@ def move_pass(
     # list_of is −2 for a cell that is fixed or has moved
     num_touched = 0
     for cell in range(num_cells):
-        if movable[cell]:
-            if boundary_only:
-                cutting = False
-                for at in range(cell_offsets[cell], cell_offsets[cell + 1]):
-                    if counts[cell_nets[at], 0] > 0 and counts[cell_nets[at], 1] > 0:
-                        cutting = True
-                        break
-                if not cutting:
-                    continue
-            touched[num_touched] = cell
-            num_touched += 1
-        else:
+        if not movable[cell]:
             list_of[cell] = -2
-    if boundary_only and num_touched == 0:
+    if boundary_only:
+        for net in range(len(net_weights)):
+            if counts[net, 0] > 0 and counts[net, 1] > 0:
+                for pin in range(net_offsets[net], net_offsets[net + 1]):
+                    cell = net_cells[pin]
+                    if movable[cell] and not is_touched[cell]:
+                        is_touched[cell] = True
+                        touched[num_touched] = cell
+                        num_touched += 1
+    if num_touched == 0:
         for cell in range(num_cells):
             if movable[cell]:
                 touched[num_touched] = cell

@@ -24,13 +24,30 @@ def _plain_gains(netlist: Netlist, blocks: np.ndarray) -> list[float]:
     return gains
 
 
+class _Checked(Bisection):
+    """Compares counts and gains with the plain definition after every pass, before anything is taken back."""
+
+    def _take_back(self, first: int, last: int, *, stay_exact: bool) -> None:
+        self._compare()
+        super()._take_back(first, last, stay_exact=stay_exact)
+        if self._exact:
+            self._compare()
+
+    def _compare(self) -> None:
+        assert self._gains == pytest.approx(_plain_gains(self.netlist, self.blocks), abs=1e-9)
+        for net in range(self.netlist.num_nets):
+            ones = int(self.blocks[self.netlist.cells_of(net)].sum())
+            assert self._counts[net].tolist() == [len(self.netlist.cells_of(net)) - ones, ones]
+        assert not self._is_touched.any()
+
+
 @settings(max_examples=150, deadline=None)
 @given(netlists(), st.data())
 def test_tallies_follow_every_pass(netlist: Netlist, data: st.DataObject) -> None:
     blocks = np.array(data.draw(st.lists(st.integers(0, 1), min_size=netlist.num_cells, max_size=netlist.num_cells)))
     fixed = np.where(np.array(data.draw(st.lists(st.booleans(), min_size=len(blocks), max_size=len(blocks)))), blocks, FREE)
     window = Rules.from_request(2, tolerance=data.draw(st.sampled_from(["0%", "10%", "40%"]))).window(netlist)
-    work = Bisection(netlist, blocks, window, fixed.astype(np.int32))
+    work = _Checked(netlist, blocks, window, fixed.astype(np.int32))
     start = (work.violation, work.cut)
     work.move(
         data.draw(st.integers(0, 4)),
@@ -43,7 +60,6 @@ def test_tallies_follow_every_pass(netlist: Netlist, data: st.DataObject) -> Non
     counted = Partition.from_blocks(netlist, work.blocks, 2)
     assert work.cut == pytest.approx(counted.cut_nets, abs=1e-9)
     assert work.load == pytest.approx(counted.block_areas, abs=1e-9)
-    assert work._gains == pytest.approx(_plain_gains(netlist, work.blocks), abs=1e-9)
     assert not np.any((fixed != FREE) & (fixed != work.blocks))
     assert work.violation < start[0] + 1e-9
     if work.violation >= start[0] - 1e-12:
