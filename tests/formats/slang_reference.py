@@ -2,17 +2,24 @@
 
 from __future__ import annotations
 
-from collections import defaultdict
+from collections import Counter, defaultdict
 from typing import Any
 
-import pyslang
 from pyslang import ast, syntax
+
+__all__ = ["Nets", "slang_literal", "slang_nets"]
 
 Key = tuple[str, str, int]
 
 
-def slang_nets(text: str, stubs: set[str]) -> tuple[set[str], set[frozenset[str]]]:
-    """Cell names, and nets as sets of cell names, of a design whose library cells are the modules in `stubs`.
+Nets = Counter[frozenset[tuple[str, int]]]
+
+_DIRECTIONS = {"In": 1, "Out": 2, "InOut": 3}
+_AS_PORT_CELL = {"In": 2, "Out": 1, "InOut": 3}
+
+
+def slang_nets(text: str, stubs: set[str]) -> tuple[set[str], Nets]:
+    """Cell names, and nets as sets of (cell, direction), of a design whose library cells are the modules in `stubs`.
 
     Nets on a constant are left out, ports of the top module are cells, as `read_verilog` has it.
     """
@@ -22,7 +29,7 @@ def slang_nets(text: str, stubs: set[str]) -> tuple[set[str], set[frozenset[str]
     assert not errors, [str(d.code) for d in errors]
     (top,) = [instance for instance in compilation.getRoot().topInstances if instance.name == "top"]
     parents: dict[Key, Key] = {}
-    pins: list[tuple[Key, str]] = []
+    pins: list[tuple[Key, str, int]] = []
     cells: set[str] = set()
 
     def find(key: Key) -> Key:
@@ -83,7 +90,8 @@ def slang_nets(text: str, stubs: set[str]) -> tuple[set[str], set[frozenset[str]
                         continue
                     outer = bits(connection.expression, path)
                     if member.definition.name in stubs:
-                        pins.extend((key, name) for key in outer)
+                        direction = _DIRECTIONS[connection.port.direction.name]
+                        pins.extend((key, name, direction) for key in outer)
                     else:
                         inner = symbol_bits(connection.port.internalSymbol, name + "/")
                         for left, right in zip(inner, outer, strict=True):
@@ -100,13 +108,19 @@ def slang_nets(text: str, stubs: set[str]) -> tuple[set[str], set[frozenset[str]
                 else f"{port.name}[{index}]"
             )
             cells.add(cell)
-            pins.append((key, cell))
+            pins.append((key, cell, _AS_PORT_CELL[port.direction.name]))
     walk(top.body, "")
-    nets: dict[Key, set[str]] = defaultdict(set)
-    for key, cell in pins:
-        nets[find(key)].add(cell)
+    nets: dict[Key, dict[str, int]] = defaultdict(lambda: defaultdict(int))
+    for key, cell, direction in pins:
+        nets[find(key)][cell] |= direction
     nets.pop(find(("", "constant", 0)), None)
-    return cells, {frozenset(net) for net in nets.values()}
+    return cells, Counter(frozenset(net.items()) for net in nets.values())
 
 
-__all__ = ["pyslang", "slang_nets"]
+def slang_literal(constant: str) -> str:
+    """The bits of a constant as pyslang evaluates it, most significant first; z is written x."""
+    compilation = ast.Compilation()
+    compilation.addSyntaxTree(syntax.SyntaxTree.fromText(f"module top; localparam p = {constant}; endmodule"))
+    (parameter,) = [member for member in compilation.getRoot().topInstances[0].body if member.name == "p"]
+    value = parameter.value.value
+    return "".join(str(value[index]).lower().replace("z", "x") for index in reversed(range(value.bitWidth)))
