@@ -11,14 +11,14 @@ from typing import NoReturn
 
 from rich_argparse import RichHelpFormatter
 
-from netpart.cli import audit, bound, split, survey
+from netpart.cli import audit, bound, split, survey, warmup
 from netpart.cli.console import error_console
 from netpart.netlist import NetpartError
 from netpart.report import version
 
 __all__ = ["build_parser", "main"]
 
-_COMMANDS = (split, survey, bound, audit)
+_COMMANDS = (split, survey, bound, audit, warmup)
 _INTERRUPTED = 130
 
 

@@ -18,7 +18,7 @@ from netpart.cli.options import (
     resolve_settings,
 )
 from netpart.report import dump_json, format_assignment, make_record, show_split, write_files
-from netpart.solve import Budget, Journal, split
+from netpart.solve import Budget, Journal, kernels_are_cached, split
 
 __all__ = ["NAME", "SUMMARY", "add_options", "run"]
 
@@ -40,6 +40,8 @@ def run(arguments: argparse.Namespace) -> int:
     journal = Journal(None if arguments.quiet else progress_listener(arguments.verbose))
     with journal.stage("read", arguments.files[0]):
         netlist = read_netlist(arguments)
+    if not kernels_are_cached():
+        journal.say("kernels", "this first run compiles them, which takes some 10 s; later runs don't")
     budget = Budget(arguments.time_limit)
     for number in (signal.SIGINT, signal.SIGTERM):
         signal.signal(number, lambda *_: budget.request_stop())

@@ -5,6 +5,7 @@ from netpart.solve.result import Request, Result
 from netpart.solve.settings import EFFORTS, Settings
 from netpart.solve.spectrum import describe_spectrum
 from netpart.solve.split import bound, find_bounds, split
+from netpart.solve.warmup import kernels_are_cached, warm_up
 
 __all__ = [
     "EFFORTS",
@@ -19,5 +20,7 @@ __all__ = [
     "bound",
     "describe_spectrum",
     "find_bounds",
+    "kernels_are_cached",
     "split",
+    "warm_up",
 ]
