@@ -1,7 +1,24 @@
 """Lower bounds on the cost of every legal partition, and the proofs that they hold."""
 
 from netpart.bounds.bound import Bound, next_attainable
+from netpart.bounds.certificate import Certificate, CertificateError, dump_certificates, load_certificates
 from netpart.bounds.eigenproof import StarMatrix, verify_eigenvalue
 from netpart.bounds.spectral import spectral_bound
+from netpart.bounds.spreading import SpreadingResult, spreading_bound
+from netpart.bounds.verify import SpreadingProof, check_spreading
 
-__all__ = ["Bound", "StarMatrix", "next_attainable", "spectral_bound", "verify_eigenvalue"]
+__all__ = [
+    "Bound",
+    "Certificate",
+    "CertificateError",
+    "SpreadingProof",
+    "SpreadingResult",
+    "StarMatrix",
+    "check_spreading",
+    "dump_certificates",
+    "load_certificates",
+    "next_attainable",
+    "spectral_bound",
+    "spreading_bound",
+    "verify_eigenvalue",
+]

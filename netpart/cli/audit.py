@@ -9,6 +9,7 @@ from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
+from netpart.bounds import Certificate, CertificateError, load_certificates
 from netpart.cli.console import output_console
 from netpart.cli.options import (
     add_input_options,
@@ -19,7 +20,7 @@ from netpart.cli.options import (
     resolve_rules,
 )
 from netpart.formats import read_assignment
-from netpart.netlist import InputError, Rules
+from netpart.netlist import InputError, Netlist, Rules
 from netpart.report import SCHEMA_NAME, AuditReport, Finding, audit, dump_json, rules_of_record, show_audit
 
 __all__ = ["NAME", "SUMMARY", "add_options", "run"]
@@ -37,6 +38,12 @@ def add_options(parser: argparse.ArgumentParser) -> None:
         "--record",
         metavar="FILE",
         help="the record whose claims are checked (default: record.json beside the assignment, where there is one)",
+    )
+    add_option(
+        parser,
+        "--certificate",
+        metavar="FILE",
+        help="proofs of the bounds in the record (default: certificate.npz beside the assignment, where there is one)",
     )
     add_rule_options(parser)
     add_output_options(parser, folder=False)
@@ -56,7 +63,12 @@ def run(arguments: argparse.Namespace) -> int:
     else:
         content = Path(arguments.assignment).read_bytes()
         pairs = [(cell, block) for cell, block, _ in rows]
-        report = audit(netlist, pairs, rules, record=record, assignment_bytes=content)
+        try:
+            certificates = _find_certificates(arguments, netlist, rules)
+        except CertificateError as fault:
+            report = AuditReport((Finding("the certificate can be read and belongs here", "yes", str(fault), False),))
+        else:
+            report = audit(netlist, pairs, rules, record=record, assignment_bytes=content, certificates=certificates)
     if arguments.json:
         sys.stdout.write(dump_json(report.to_dict()).decode())
     elif not arguments.quiet:
@@ -75,6 +87,15 @@ def _complete_from_record(arguments: argparse.Namespace, record: dict[str, Any] 
         return resolve_rules(arguments)
     claimed = rules_of_record(record)
     return claimed if arguments.tolerance is None else replace(claimed, tolerance=arguments.tolerance)
+
+
+def _find_certificates(arguments: argparse.Namespace, netlist: Netlist, rules: Rules) -> list[Certificate]:
+    path = Path(arguments.certificate) if arguments.certificate else None
+    if path is None:
+        path = Path(arguments.assignment).with_name("certificate.npz")
+        if not path.exists():
+            return []
+    return load_certificates(path, netlist, rules)
 
 
 def _find_record(arguments: argparse.Namespace) -> dict[str, Any] | None:

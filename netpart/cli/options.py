@@ -26,6 +26,7 @@ __all__ = [
     "reading_options",
     "resolve_rules",
     "resolve_settings",
+    "whole_from",
 ]
 
 
@@ -68,7 +69,7 @@ def add_input_options(parser: argparse.ArgumentParser) -> None:
 def add_rule_options(parser: argparse.ArgumentParser) -> None:
     """What a partition must keep to."""
     group = parser.add_argument_group("rules")
-    add_option(group, "--blocks", kind=_whole_from(1), metavar="K", help="number of blocks (default: 2)")
+    add_option(group, "--blocks", kind=whole_from(1), metavar="K", help="number of blocks (default: 2)")
     add_option(group, "--shares", metavar="60,40", help="target share of each block (default: equal)")
     add_option(
         group,
@@ -101,12 +102,12 @@ def add_engine_options(parser: argparse.ArgumentParser) -> None:
     add_option(group, "--settings", metavar="FILE.toml", help="settings by name; see --list-settings")
     group.add_argument("--list-settings", action=_ListSettings, help="print every setting with its default, and stop")
     group.add_argument("--set", action="append", default=[], metavar="NAME=VALUE", help="one setting by name, over the file")
-    add_option(group, "--starts", kind=_whole_from(1), metavar="N", help="independent starts, the best is kept")
-    add_option(group, "--seed", kind=_whole_from(0), default=1, metavar="N", help="random seed (default: 1)")
+    add_option(group, "--starts", kind=whole_from(1), metavar="N", help="independent starts, the best is kept")
+    add_option(group, "--seed", kind=whole_from(0), default=1, metavar="N", help="random seed (default: 1)")
     add_option(
         group,
         "--jobs",
-        kind=_whole_from(1),
+        kind=whole_from(1),
         default=os.cpu_count() or 1,
         metavar="N",
         help="threads; the result does not depend on it (default: one per processor)",
@@ -117,6 +118,13 @@ def add_engine_options(parser: argparse.ArgumentParser) -> None:
         kind=parse_duration,
         metavar="60s",
         help="stop with the best so far; makes a run hard to reproduce",
+    )
+    add_option(
+        group,
+        "--bound-time",
+        kind=parse_pause,
+        metavar="10s",
+        help="time for the lower bound instead of its work budget (not reproducible); 0s leaves it at the spectral one",
     )
 
 
@@ -178,16 +186,26 @@ _UNITS = {"": 1.0, "s": 1.0, "ms": 1e-3, "m": 60.0, "min": 60.0, "h": 3600.0}
 
 def parse_duration(text: str) -> float:
     """Seconds from ``60``, ``60s``, ``1.5min``, ``2h``."""
-    match = re.fullmatch(r"\s*(\d+(?:\.\d+)?)\s*([a-z]*)\s*", text)
-    if match is None or match[2] not in _UNITS:
-        raise argparse.ArgumentTypeError(f"expected a duration such as 60s or 2min, found {text!r}")
-    seconds = float(match[1]) * _UNITS[match[2]]
-    if not 0 < seconds < 1e9:
+    seconds = parse_pause(text)
+    if seconds <= 0:
         raise argparse.ArgumentTypeError(f"expected a duration above zero, found {text!r}")
     return seconds
 
 
-def _whole_from(low: int) -> Callable[[str], int]:
+def parse_pause(text: str) -> float:
+    """Seconds as in `parse_duration`, or 0."""
+    match = re.fullmatch(r"\s*(\d+(?:\.\d+)?)\s*([a-z]*)\s*", text)
+    if match is None or match[2] not in _UNITS:
+        raise argparse.ArgumentTypeError(f"expected a duration such as 60s or 2min, found {text!r}")
+    seconds = float(match[1]) * _UNITS[match[2]]
+    if seconds >= 1e9:
+        raise argparse.ArgumentTypeError(f"expected a duration below 1e9 s, found {text!r}")
+    return seconds
+
+
+def whole_from(low: int) -> Callable[[str], int]:
+    """A parser of whole numbers from `low`."""
+
     def parse(text: str) -> int:
         if not re.fullmatch(r"\d{1,18}", text.strip()) or int(text) < low:
             raise argparse.ArgumentTypeError(f"expected a whole number from {low}, found {text!r}")

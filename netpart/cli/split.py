@@ -6,6 +6,7 @@ import argparse
 import signal
 import sys
 
+from netpart.bounds import dump_certificates
 from netpart.cli.console import output_console, progress_listener
 from netpart.cli.options import (
     add_engine_options,
@@ -52,13 +53,17 @@ def run(arguments: argparse.Namespace) -> int:
         settings=settings,
         rng=arguments.seed,
         jobs=arguments.jobs,
+        bound_time=arguments.bound_time,
         budget=budget,
         journal=journal,
     )
     assignment = format_assignment(netlist, result.partition.blocks, rules)
     record = make_record(result, reading=reading_options(arguments), jobs=arguments.jobs, assignment=assignment)
     if arguments.output is not None:
-        write_files(arguments.output, {"assignment.csv": assignment, "record.json": dump_json(record)})
+        files = {"assignment.csv": assignment}
+        if result.certificates:
+            files["certificate.npz"] = dump_certificates(netlist, rules, result.certificates)
+        write_files(arguments.output, {**files, "record.json": dump_json(record)})
     if arguments.json:
         sys.stdout.write(dump_json(record).decode())
     elif not arguments.quiet:

@@ -8,12 +8,14 @@ from __future__ import annotations
 import hashlib
 import math
 from collections import Counter
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any, NamedTuple
 
+from netpart.bounds import Certificate
 from netpart.netlist import CellFlag, Netlist, Rules
+from netpart.solve import recheck_bounds
 
 __all__ = ["AuditReport", "Finding", "audit", "rules_of_record"]
 
@@ -80,6 +82,7 @@ def audit(
     *,
     record: Mapping[str, Any] | None = None,
     assignment_bytes: bytes | None = None,
+    certificates: Sequence[Certificate] = (),
 ) -> AuditReport:
     """Check an assignment against the rules, and a record's claims against both.
 
@@ -92,6 +95,8 @@ def audit(
         A parsed record.json; each of its figures becomes a finding.
     assignment_bytes : bytes, optional
         The file as it lies on disk, compared with the record's hash.
+    certificates : sequence of Certificate
+        Proofs of the bounds that the record claims; a bound that cannot be proved again is refuted.
 
     Returns
     -------
@@ -107,6 +112,7 @@ def audit(
     legal = all(finding.holds for finding in findings)
     if record is not None:
         findings += _check_claims(netlist, figures, rules, record, legal, assignment_bytes)
+        findings += _check_bounds(netlist, rules, record, certificates)
     return AuditReport(tuple(findings))
 
 
@@ -214,6 +220,18 @@ def _check_claims(
         yield _compare(f"terminals of block {name}", block["terminals"], figures["block_terminals"][name])
     yield _compare("all rules met", result["legal"], legal)
     yield from _check_gap(figures, record)
+
+
+def _check_bounds(
+    netlist: Netlist, rules: Rules, record: Mapping[str, Any], certificates: Sequence[Certificate]
+) -> Iterable[Finding]:
+    claims = record["bounds"]
+    proved = recheck_bounds(netlist, rules, record["request"]["objective"], claims, certificates)
+    for claim in claims:
+        again = proved[claim["kind"]]
+        holds = isinstance(again, float) and claim["value"] <= again
+        found = f"{again:g} proved again" if isinstance(again, float) else again
+        yield Finding(f"{claim['kind']} bound", f"{claim['value']:g}", found, holds)
 
 
 def _check_gap(figures: Mapping[str, Any], record: Mapping[str, Any]) -> Iterable[Finding]:

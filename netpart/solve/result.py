@@ -6,6 +6,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from netpart.bounds.bound import Bound
+from netpart.bounds.certificate import Certificate
 from netpart.netlist import Netlist, Partition, Rules
 from netpart.solve.journal import StageCost, TraceRow
 from netpart.solve.settings import Settings
@@ -53,6 +54,8 @@ class Result:
     partition : Partition
     bounds : tuple of Bound
         Verified lower bounds on the cost of every legal partition.
+    certificates, bound_history
+        What proves the spreading bound, and how its estimate rose (seconds, value).
     spectral : dict or None
         λ1, the Cheeger bracket and the sweep's conductance (two blocks).
     trace, stages
@@ -68,6 +71,8 @@ class Result:
     partition: Partition
     broken_rules: tuple[str, ...]
     bounds: tuple[Bound, ...]
+    certificates: tuple[Certificate, ...]
+    bound_history: tuple[tuple[float, float], ...]
     spectral: dict[str, Any] | None
     trace: tuple[TraceRow, ...]
     stages: tuple[StageCost, ...]
@@ -126,6 +131,7 @@ class Result:
             },
             "bounds": [bound.to_dict() for bound in self.bounds],
             "best_bound": self.best_bound,
+            "bound_history": [{"seconds": seconds, "value": value} for seconds, value in self.bound_history],
             "gap": self.gap,
             "spectral": self.spectral,
             "trace": [row._asdict() for row in self.trace],

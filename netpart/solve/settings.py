@@ -47,6 +47,7 @@ class Settings:
     pool: int = _knob(8, "solutions that are followed up", low=1, high=1000)
     cycles: int = _knob(2, "times the pool is coarsened within its blocks and improved again", low=0, high=10_000)
     recombinations: int = _knob(24, "times two solutions of the pool are recombined", low=0, high=100_000)
+    bound_work: float = _knob(100.0, "for the spreading bound: trees x pins in millions; 0 leaves it out", low=0, high=1e9)
     work: float = _knob(12.0, "millions of pins after which a phase ends; at least 4 of its tasks run", low=0, high=1e9)
 
     @classmethod
@@ -139,8 +140,8 @@ def _check(knob: Any, value: Any, source: str) -> None:
 
 
 EFFORTS: dict[str, dict[str, Any]] = {
-    "quick": {"starts": 1, "pool": 1, "cycles": 0, "recombinations": 0},
+    "quick": {"starts": 1, "pool": 1, "cycles": 0, "recombinations": 0, "bound_work": 20.0},
     "normal": {},
-    "thorough": {"starts": 80, "pool": 16, "cycles": 3, "recombinations": 120, "work": 120.0},
+    "thorough": {"starts": 80, "pool": 16, "cycles": 3, "recombinations": 120, "work": 120.0, "bound_work": 1000.0},
 }
 """Presets by name: what each sets differently from the defaults of `Settings`."""

@@ -7,8 +7,8 @@ from fractions import Fraction
 
 import numpy as np
 
-from netpart.bounds import Bound, spectral_bound
 from netpart.netlist import OBJECTIVES, Netlist, Partition, Rules, UsageError
+from netpart.solve.bounding import find_bounds
 from netpart.solve.journal import Budget, Journal
 from netpart.solve.kway import partition_blocks
 from netpart.solve.result import Request, Result
@@ -16,10 +16,7 @@ from netpart.solve.settings import Settings
 from netpart.solve.spectrum import describe_spectrum
 from netpart.solve.starts import seed_number
 
-__all__ = ["bound", "find_bounds", "split"]
-
-
-_TRIVIAL = Bound("trivial", 0.0, True, 0.0, "no cost is negative")
+__all__ = ["split"]
 
 
 def split(
@@ -34,6 +31,7 @@ def split(
     rng: int | np.random.Generator | None = None,
     jobs: int | None = None,
     time_limit: float | None = None,
+    bound_time: float | None = None,
     budget: Budget | None = None,
     journal: Journal | None = None,
 ) -> Result:
@@ -55,6 +53,8 @@ def split(
         Threads; the partition does not depend on it.
     time_limit : float, optional
         Seconds after which no new work begins. Makes a run hard to reproduce.
+    bound_time : float, optional
+        Seconds for the lower bound instead of the work that the settings allow; 0 leaves the spreading bound out.
     budget, journal : optional
         To stop a run from outside, and to follow it.
 
@@ -70,6 +70,7 @@ def split(
     budget = budget or Budget(time_limit)
     journal = journal or Journal()
     seed = seed_number(rng)
+    jobs = jobs or os.cpu_count() or 1
     window = rules.check_feasible(netlist)
     _, spectral = describe_spectrum(netlist, journal) if rules.num_blocks > 1 else (None, None)
     with journal.stage("partition", f"{settings.starts} starts"):
@@ -80,13 +81,22 @@ def split(
             objective,
             settings,
             seed,
-            jobs=jobs or os.cpu_count() or 1,
+            jobs=jobs,
             budget=budget,
             journal=journal,
         )
     partition = Partition.from_blocks(netlist, assigned, rules.num_blocks)
     journal.note_cut("result", 0, partition.cost(objective))
-    bounds = find_bounds(netlist, rules, objective, journal=journal, budget=budget)
+    found = find_bounds(
+        netlist,
+        rules,
+        objective,
+        work=settings.bound_work,
+        time_limit=bound_time,
+        jobs=jobs,
+        journal=journal,
+        budget=budget,
+    )
     broken = tuple(partition.broken_rules(netlist, rules))
     if budget.stop_requested:
         status, message = "interrupted", "stopped by request; this is the best partition so far"
@@ -107,45 +117,15 @@ def split(
         message=message,
         partition=partition,
         broken_rules=broken,
-        bounds=bounds,
+        bounds=found.bounds,
+        certificates=found.certificates,
+        bound_history=found.history,
         spectral=spectral,
         trace=tuple(journal.trace),
         stages=tuple(journal.stages),
         warnings=tuple(journal.warnings),
-        reproducible=budget.time_limit is None and not budget.stop_requested,
+        reproducible=budget.time_limit is None and not budget.stop_requested and not bound_time,
     )
-
-
-def find_bounds(netlist: Netlist, rules: Rules, objective: str, *, journal: Journal, budget: Budget) -> tuple[Bound, ...]:
-    """All verified bounds that can be found, best first; the trivial 0 where there is no other."""
-    if objective not in OBJECTIVES:
-        raise UsageError(f"objective: expected one of {', '.join(OBJECTIVES)}, found {objective!r}")
-    rules.check_feasible(netlist)
-    bounds: list[Bound] = []
-    if rules.num_blocks > 1 and not budget.exhausted:
-        with journal.stage("bound", "spectral lower bound and its proof"):
-            found = spectral_bound(netlist, rules, objective)
-        if found is not None:
-            bounds.append(found)
-    return tuple(sorted(bounds, key=lambda entry: -entry.value)) or (_TRIVIAL,)
-
-
-def bound(
-    netlist: Netlist,
-    blocks: int = 2,
-    tolerance: float | Fraction | str = 0.10,
-    *,
-    rules: Rules | None = None,
-    objective: str = "cut-nets",
-    time_limit: float | None = None,
-) -> Bound:
-    """The best verified lower bound on the cost of every legal partition; the trivial 0 where there is no better.
-
-    Parameters are those of `split`.
-    """
-    rules = rules or Rules.from_request(blocks, tolerance=tolerance)
-    found = find_bounds(netlist, rules, objective, journal=Journal(), budget=Budget(time_limit))
-    return found[0]
 
 
 def _describe_ignored(netlist: Netlist) -> str:

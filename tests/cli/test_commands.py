@@ -51,7 +51,7 @@ def test_split_writes_assignment_and_record(circuit: Path, tmp_path: Path, capsy
     jsonschema.Draft202012Validator(load_schema()).validate(record)
     assert record["result"]["cut_nets"] == 2
     assert record["best_bound"] <= 2
-    assert sorted(path.name for path in out.iterdir()) == ["assignment.csv", "record.json"]
+    assert sorted(path.name for path in out.iterdir()) == ["assignment.csv", "certificate.npz", "record.json"]
 
 
 def test_the_schema_itself_is_valid() -> None:
@@ -89,6 +89,28 @@ def test_audit_confirms_a_run_and_finds_an_altered_line(circuit: Path, tmp_path:
         assert run("audit", circuit, "--assignment", assignment) == 1, altered
     assignment.unlink()
     assert run("audit", circuit, "--assignment", assignment) == 2
+
+
+def test_audit_refutes_bounds_that_cannot_be_proved_again(circuit: Path, tmp_path: Path) -> None:
+    """A bound raised in the record, consistently with its gap, fails; so does one whose certificate is gone or broken."""
+    out = tmp_path / "out"
+    run("split", circuit, "--unit-areas", "--quiet", "-o", out)
+    record = json.loads((out / "record.json").read_text())
+    assert run("audit", circuit, "--assignment", out / "assignment.csv") == 0
+    for kind in ("spectral", "spreading", "oracle"):
+        forged = json.loads(json.dumps(record))
+        forged["bounds"] = [{"kind": kind, "value": 2.0, "seconds": 0, "verified": True, "certificate": None}]
+        forged |= {"best_bound": 2.0, "gap": 0.0}
+        (out / "record.json").write_text(json.dumps(forged))
+        proved = {bound["kind"]: bound["value"] for bound in record["bounds"]}
+        assert run("audit", circuit, "--assignment", out / "assignment.csv") == (0 if proved.get(kind) == 2 else 1), kind
+    (out / "record.json").write_text(json.dumps(record))
+    content = (out / "certificate.npz").read_bytes()
+    (out / "certificate.npz").write_bytes(content[:-30])
+    assert run("audit", circuit, "--assignment", out / "assignment.csv") == 1
+    (out / "certificate.npz").unlink()
+    claimed = any(bound["kind"] == "spreading" for bound in record["bounds"])
+    assert run("audit", circuit, "--assignment", out / "assignment.csv") == (1 if claimed else 0)
 
 
 def test_audit_without_a_record_takes_the_rules_from_the_options(circuit: Path, tmp_path: Path) -> None:
