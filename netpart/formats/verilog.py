@@ -252,7 +252,9 @@ def _notes(flat: Flat, bodies: Mapping[str, Body], num_constant_pins: int) -> li
             f" and {len(undeclared) - 3} more" if undeclared[3:] else ""
         )
         notes.append(f"nets used without a declaration (scalars by clause 4.5): {shown_names}")
-    empty = sorted(name for name, body in bodies.items() if not len(body.cell_types) and not body.children)
+    empty = sorted(
+        name for name, body in bodies.items() if not len(body.cell_types) and not body.children and not len(body.ties)
+    )
     if empty and len(bodies) > 1:
         shown_names = ", ".join(map(decoded, empty[:3])) + (f" and {len(empty) - 3} more" if empty[3:] else "")
         notes.append(f"modules without cells, of which nothing remains: {shown_names}")

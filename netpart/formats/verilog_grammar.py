@@ -173,7 +173,6 @@ def _take_select(tokens: pp.ParseResults) -> Any:
 _select.set_parse_action(_take_select)
 EXPRESSION = pp.Forward()
 """What may be connected: a net, a select, a concatenation, a replication or a constant."""
-EXPRESSION.set_name("a net, a select, a concatenation or a constant")
 _parts = _listed(EXPRESSION) + _sign("}", "',' or '}'")
 _joined = pp.Located(_sign("{") - _parts)
 _joined.set_parse_action(lambda tokens: [("join", tuple(tokens[1][0]), tokens[0])])
@@ -189,9 +188,8 @@ def _take_repeated(text: str, loc: int, tokens: pp.ParseResults) -> Any:
 
 _repeated.set_parse_action(_take_repeated)
 _operator = pp.Regex(_OPERATOR).set_parse_action(_fail("a net without operators (only structure is read)"))
-EXPRESSION <<= (
-    _select | _repeated | _joined | _constant | (_sign("(") + EXPRESSION + _sign(")")) | _operator
-) + pp.Optional(_operator)
+_operand = _select | _repeated | _joined | _constant | (_sign("(") + EXPRESSION + _sign(")")) | _operator
+EXPRESSION <<= _operand.set_name("a net, a select, a concatenation or a constant") + pp.Optional(_operator)
 
 _range = pp.Group(_sign("[") - _integer + _sign(":") + _integer + _sign("]")).set_name("a range")
 _maybe_range = pp.Optional(_range, default=None)

@@ -42,7 +42,7 @@ class _Spellings(dict[str | int, int]):
         self.reserved = reserved
 
     def __missing__(self, spelling: str | int) -> int:
-        if spelling in self.reserved:
+        if spelling in self.reserved or (isinstance(spelling, str) and len(spelling) > MAX_NAME_LENGTH):
             raise _Doubt
         name = plain_name(spelling) if isinstance(spelling, str) else spelling
         self[spelling] = number = self.vocabulary.number(name)
@@ -91,6 +91,7 @@ _ITEM = re.compile(
 _ONE_ITEM = re.sub(r"\((?!\?)", "(?:", _ITEM.pattern)
 _JOINED = re.compile(rf"\{{{SPACE}*+({_ONE_ITEM}(?:,{SPACE}*+{_ONE_ITEM})*+)\}}{SPACE}*+")
 _END = re.compile(r"endmodule(?![A-Za-z0-9_$])")
+_BLANKS = " \t\r\n\f\v"
 _RUN = 4096
 
 
@@ -132,7 +133,7 @@ def _read_value(text: str) -> Expression | None:
     joined = _JOINED.fullmatch(text)
     if joined is not None:
         return ("join", tuple(map(_read_item, _ITEM.finditer(joined[1]))), 0)
-    if not text.strip(" \t\r\n\f\v"):
+    if not text.strip(_BLANKS):
         return None
     if text.count("{") + text.count("(") > MAX_NESTING // 2:
         raise _Doubt
@@ -142,6 +143,10 @@ def _read_value(text: str) -> Expression | None:
         raise _Doubt from None
 
 
+def _is_doubtful(name: str) -> bool:
+    return name in KEYWORDS or len(name) > MAX_NAME_LENGTH
+
+
 def _read_item(match: re.Match[str]) -> Expression:
     name, left, right, constant = match.groups()
     if constant is not None:
@@ -149,7 +154,7 @@ def _read_item(match: re.Match[str]) -> Expression:
         if not bits:
             raise _Doubt
         return ("constant", bits, 0)
-    if name in KEYWORDS:
+    if _is_doubtful(name):
         raise _Doubt
     name = plain_name(name)
     if left is None:
@@ -175,10 +180,10 @@ class _Scanner:
         text = self.text.text
         if self.module is None:
             header = _HEADER.match(text, at)
-            if header is None or header.end() - at > MAX_NAME_LENGTH:
+            if header is None:
                 return at
             ports = [(name[0], name.start()) for name in _EACH_NAME.finditer(text, header.start(2), header.end(2))]
-            if header[1] in KEYWORDS or any(name in KEYWORDS for name, _ in ports):
+            if _is_doubtful(header[1]) or any(_is_doubtful(name) for name, _ in ports):
                 return at
             self._open(plain_name(header[1]), [(None, None, None, plain_name(n), place) for n, place in ports], at, 0)
             return header.end()
@@ -189,17 +194,17 @@ class _Scanner:
         if after > at:
             return after
         match = _DECLARATION.match(text, at)
-        if match is not None and match.end() - at <= MAX_NAME_LENGTH:
+        if match is not None:
             word, left, right, _ = match.groups()
             bounds = None if left is None else (int(left), int(right))
             names = [(name[0], name.start()) for name in _EACH_NAME.finditer(text, match.start(4), match.end(4) + 1)]
-            if not any(name in KEYWORDS for name, _ in names):
+            if not any(_is_doubtful(name) for name, _ in names):
                 direction = None if word == "wire" else word
                 self._declare(self.module, direction, "wire", bounds, [(plain_name(n), place) for n, place in names])
                 return match.end()
             return at
         match = _ASSIGNMENT.match(text, at)
-        if match is not None and match.end() - at <= MAX_NAME_LENGTH:
+        if match is not None:
             try:
                 left_side, right_side = _read_value(match[1]), _read_value(match[2])
             except _Doubt:
@@ -224,12 +229,11 @@ class _Scanner:
             kind, name, named, ordered = match.groups()
             if kind in KEYWORDS and (named is not None or kind not in GATES):
                 break
-            if match.end() - at > MAX_NAME_LENGTH:
-                break
             if named is not None:
                 found: list[Any] = _EACH_PIN.findall(named)
             else:
-                found = list(enumerate(ordered.split(","))) if ordered.strip(" \t\r\n\f\v") else []
+                ordered = ordered.strip(_BLANKS)
+                found = [(place, value.strip(_BLANKS)) for place, value in enumerate(ordered.split(","))] if ordered else []
             types.append(kind)
             names.append(name)
             statements.append(at)
@@ -239,7 +243,7 @@ class _Scanner:
         if not names:
             return at
         try:
-            if not KEYWORDS.isdisjoint(names):
+            if not KEYWORDS.isdisjoint(names) or max(map(len, names)) > MAX_NAME_LENGTH:
                 raise _Doubt
             type_numbers = array("i", map(self.type_spellings.__getitem__, types))
             port_numbers = array("i", map(self.port_spellings.__getitem__, [pin[0] for pin in pins]))

@@ -27,7 +27,7 @@ _WORD = r"[A-Za-z_][A-Za-z0-9_$]*+"
 _DIRECTIVE = re.compile(
     rf"`(?:timescale{SPACE}*+\d++{_BLANKS}[munpf]?s{_BLANKS}/{_BLANKS}\d++{_BLANKS}[munpf]?s|default_nettype{SPACE}++({_WORD})"
     rf"|unconnected_drive{SPACE}++{_WORD}|line{_BLANKS}\d++{_BLANKS}\"[^\"\n]*+\"{_BLANKS}\d|begin_keywords{SPACE}*+\"[^\"\n]*+\""
-    rf"|pragma[^\n]*+|undef{SPACE}++{_WORD}|define(?:[^\n\\]|\\.|\\\n)*+"
+    rf"|pragma[^\n]*+|undef{SPACE}++{_WORD}|define(?:[^\n\\]|\\\r?\n|\\.)*+"
     r"|(?:celldefine|endcelldefine|resetall|nounconnected_drive|end_keywords|delay_mode_\w++|suppress_faults|nosuppress_faults"
     r"|enable_portfaults|disable_portfaults)(?![A-Za-z0-9_$]))",
     re.ASCII,
