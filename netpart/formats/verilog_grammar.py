@@ -29,6 +29,7 @@ __all__ = [
     "NAME",
     "SPACE",
     "STATEMENT",
+    "BeyondLimit",
     "constant_bits",
     "plain_name",
 ]
@@ -80,6 +81,10 @@ _OTHER_WORDS = _words(
 )
 KEYWORDS = GATES | _NET_TYPES | _BEHAVIOUR | _OTHER_WORDS
 """Reserved words (annex B)."""
+
+
+class BeyondLimit(pp.ParseFatalException):
+    """What stands there goes beyond one of the limits above."""
 
 
 def plain_name(identifier: str) -> str:
@@ -135,7 +140,7 @@ def _listed(element: pp.ParserElement) -> pp.ParserElement:
 def _take_name(text: str, loc: int, tokens: pp.ParseResults) -> str:
     name = plain_name(tokens[0])
     if len(name) > MAX_NAME_LENGTH:
-        raise pp.ParseFatalException(text, loc, f"Expected a name of at most {MAX_NAME_LENGTH:,} characters")
+        raise BeyondLimit(text, loc, f"Expected a name of at most {MAX_NAME_LENGTH:,} characters")
     return name
 
 
@@ -147,7 +152,7 @@ _located_name = pp.Located(_name)
 
 def _take_integer(text: str, loc: int, tokens: pp.ParseResults) -> int:
     if len(tokens[0]) > 18:
-        raise pp.ParseFatalException(text, loc, "Expected a number of at most 18 digits")
+        raise BeyondLimit(text, loc, "Expected a number of at most 18 digits")
     return int(tokens[0].replace("_", ""))
 
 
@@ -157,7 +162,7 @@ _integer = pp.Regex(r"-?[0-9][0-9_]*").set_parse_action(_take_integer).set_name(
 def _take_constant(text: str, loc: int, tokens: pp.ParseResults) -> Any:
     bits = constant_bits(tokens[0])
     if not bits:
-        raise pp.ParseFatalException(text, loc, f"Expected a constant of 1 to {MAX_VECTOR_WIDTH:,} bits")
+        raise BeyondLimit(text, loc, f"Expected a constant of 1 to {MAX_VECTOR_WIDTH:,} bits")
     return [("constant", bits, loc)]
 
 
@@ -182,7 +187,7 @@ _repeated = pp.Located(_sign("{") + _integer + _sign("{") - _parts + _sign("}"))
 def _take_repeated(text: str, loc: int, tokens: pp.ParseResults) -> Any:
     count, parts = tokens[1]
     if not 1 <= count <= MAX_VECTOR_WIDTH:
-        raise pp.ParseFatalException(text, loc, f"Expected 1 to {MAX_VECTOR_WIDTH:,} repetitions")
+        raise BeyondLimit(text, loc, f"Expected 1 to {MAX_VECTOR_WIDTH:,} repetitions")
     return [("repeat", count, tuple(parts), tokens[0])]
 
 

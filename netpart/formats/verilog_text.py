@@ -9,7 +9,7 @@ from typing import Any
 import pyparsing as pp
 
 from netpart.formats.source import SourceText
-from netpart.formats.verilog_grammar import MAX_NESTING, SPACE, STATEMENT
+from netpart.formats.verilog_grammar import MAX_NESTING, SPACE, STATEMENT, BeyondLimit
 from netpart.netlist import InputError, LimitError
 
 __all__ = ["TO_SEMICOLON", "VerilogText", "decoded", "looks_like_verilog", "parse_statement", "shown", "skip_space"]
@@ -149,7 +149,7 @@ def parse_statement(text: VerilogText, start: int) -> Any:
         offset = start + fault.loc
         if offset < end:
             offset = min(skip_space(text.text, offset), end)
-        kind = LimitError if "at most" in fault.msg or " to " in fault.msg else None
+        kind = LimitError if isinstance(fault, BeyondLimit) else None
         raise text.error(offset, fault.msg.removeprefix("Expected "), kind=kind) from None
     if match is None:
         raise text.error(end, "';'" if parsed[0] != "skip" else "endmodule")
