@@ -17,6 +17,8 @@ __all__ = ["Problem", "Solution", "improve", "recombine", "solve_once"]
 
 Blocks = NDArray[np.int32]
 
+_SMALL_LEVEL = 1500
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Problem:
@@ -64,15 +66,12 @@ def solve_once(problem: Problem, index: int, rng: np.random.Generator) -> Soluti
     else:
         hierarchy = Hierarchy((Level(problem.netlist, problem.fixed),))
     seeds = settings.seed_tries if settings.levels == "many" else 1
-    coarsest = hierarchy.coarsest
-    best: Bisection | None = None
-    for attempt in range(seeds):
-        blocks = _seed(problem, coarsest, index + attempt, rng)
-        work = _refine(problem, hierarchy, len(hierarchy.levels) - 1, blocks, rng)
-        if best is None or (work.violation, work.cut) < (best.violation, best.cut):
-            best = work
-    assert best is not None
-    return _descend(problem, hierarchy, best.blocks, rng)
+    last = len(hierarchy.levels) - 1
+    tries = [
+        _refine(problem, hierarchy, last, _seed(problem, hierarchy.coarsest, index + attempt, rng), rng, boundary=False)
+        for attempt in range(seeds)
+    ]
+    return _descend(problem, hierarchy, tries, rng)
 
 
 def improve(problem: Problem, solution: Solution, rng: np.random.Generator) -> Solution:
@@ -93,7 +92,8 @@ def _cycle(problem: Problem, solution: Solution, keep: Blocks, rng: np.random.Ge
         coarse = np.empty(level.netlist.num_cells, np.int32)
         coarse[level.cluster] = blocks
         blocks = coarse
-    found = _descend(problem, hierarchy, blocks, rng)
+    start = _refine(problem, hierarchy, len(hierarchy.levels) - 1, blocks, rng)
+    found = _descend(problem, hierarchy, [start], rng)
     return min(found, solution, key=lambda entry: entry.key)
 
 
@@ -126,17 +126,31 @@ def _seed(problem: Problem, level: Level, turn: int, rng: np.random.Generator) -
     return make(level.netlist, problem.window, level.fixed, rng)
 
 
-def _descend(problem: Problem, hierarchy: Hierarchy, blocks: Blocks, rng: np.random.Generator) -> Solution:
-    """Improve on every level from the coarsest to the netlist itself."""
+def _descend(problem: Problem, hierarchy: Hierarchy, tries: list[Bisection], rng: np.random.Generator) -> Solution:
+    """Improve on every level from the one above the coarsest to the netlist itself.
+
+    The better half of the tries goes down from each level, and one alone where levels are no longer small: a coarse
+    netlist does not yet tell which try is the best, and there another one costs little.
+    """
     for number in range(len(hierarchy.levels) - 1, 0, -1):
-        work = _refine(problem, hierarchy, number, blocks, rng)
-        blocks = hierarchy.project(work.blocks, number)
-    work = _refine(problem, hierarchy, 0, blocks, rng)
+        tries.sort(key=lambda work: (work.violation, work.cut))
+        small = hierarchy.levels[number - 1].netlist.num_cells <= _SMALL_LEVEL
+        kept = tries[: (len(tries) + 1) // 2 if small else 1]
+        tries = [_refine(problem, hierarchy, number - 1, hierarchy.project(work.blocks, number), rng) for work in kept]
+    work = min(tries, key=lambda work: (work.violation, work.cut))
     middle = 0.5 * float(problem.window.lower[0] + problem.window.upper[0])
     return Solution(work.blocks, work.violation, work.cut, abs(float(work.load[0]) - middle))
 
 
-def _refine(problem: Problem, hierarchy: Hierarchy, number: int, blocks: Blocks, rng: np.random.Generator) -> Bisection:
+def _refine(
+    problem: Problem,
+    hierarchy: Hierarchy,
+    number: int,
+    blocks: Blocks,
+    rng: np.random.Generator,
+    *,
+    boundary: bool = True,
+) -> Bisection:
     """Passes on one level; above the finest the window is wider by half the largest cluster, as clusters are coarse."""
     settings = problem.settings
     level = hierarchy.levels[number]
@@ -146,13 +160,12 @@ def _refine(problem: Problem, hierarchy: Hierarchy, number: int, blocks: Blocks,
         window = AreaWindow(window.lower - extra, window.upper + extra, window.slack)
     state = rng.integers(1, 2**63, size=1, dtype=np.uint64)
     work = Bisection(level.netlist, blocks, window, level.fixed, state)
-    whole = level.netlist.num_cells <= 2 * settings.coarsest or len(hierarchy.levels) == 1
-    work.move(
-        settings.passes if not whole else max(settings.passes, 20),
-        settings.stall if not whole else max(settings.stall, level.netlist.num_cells // 4),
-        settings.tie_rule,
-        boundary=not whole,
-    )
+    if len(hierarchy.levels) > 1:
+        work.move(settings.passes, settings.stall, settings.tie_rule, boundary=boundary)
+    else:
+        work.move(
+            max(settings.passes, 20), max(settings.stall, level.netlist.num_cells // 4), settings.tie_rule, boundary=False
+        )
     if settings.method == "swaps" and work.violation == 0:
         work.swap(settings.passes, settings.stall)
     elif settings.method not in ("moves", "swaps"):

@@ -33,20 +33,22 @@ class Settings:
         "first partition: spectral sweep, random, grown breadth-first, or each of them in turn",
         choices=("sweep", "random", "grown", "each"),
     )
-    seed_tries: int = _knob(5, "first partitions on the coarsest level, the best is taken down", low=1, high=1000)
+    seed_tries: int = _knob(12, "first partitions on the coarsest level; half of them go down a level", low=1, high=1000)
     method: str = _knob("moves", "single moves, or moves and then pair swaps", choices=("moves", "swaps"))
     passes: int = _knob(4, "passes at most on a level", low=0, high=10_000)
-    stall: int = _knob(100, "moves without improvement after which a pass ends", low=1)
+    stall: int = _knob(150, "moves without improvement after which a pass ends", low=1)
     tie_rule: str = _knob("newest", "which of the cells with equal gain moves first", choices=TIE_RULES)
     coarsest: int = _knob(150, "clusters on the coarsest level", low=2, high=100_000)
     coarsen_ratio: float = _knob(3.0, "cells per cluster from a level to the next, at most", low=1.1, high=10)
     coarsen_net_power: float = _knob(0.7, "how much large nets attract less than small ones", low=0, high=4)
     coarsen_area_power: float = _knob(0.7, "how much small clusters are preferred", low=0, high=4)
-    coarsen_area_cap: float = _knob(4.0, "largest cluster, in shares of total area / coarsest", low=0.5, high=1000)
+    coarsen_area_cap: float = _knob(2.0, "largest cluster, in shares of total area / coarsest", low=0.5, high=1000)
     coarsen_net_size: int = _knob(40, "nets with more cells don't attract clusters", low=2)
     pool: int = _knob(8, "solutions that are followed up", low=1, high=1000)
     cycles: int = _knob(2, "times the pool is coarsened within its blocks and improved again", low=0, high=10_000)
     recombinations: int = _knob(24, "times two solutions of the pool are recombined", low=0, high=100_000)
+    block_tries: int = _knob(3, "attempts at more than two blocks, the best is kept", low=1, high=1000)
+    block_cycles: int = _knob(2, "times more than two blocks are improved together level by level", low=0, high=1000)
     bound_work: float = _knob(100.0, "for the spreading bound: trees x pins in millions; 0 leaves it out", low=0, high=1e9)
     work: float = _knob(12.0, "millions of pins after which a phase ends; at least 4 of its tasks run", low=0, high=1e9)
 
@@ -140,8 +142,25 @@ def _check(knob: Any, value: Any, source: str) -> None:
 
 
 EFFORTS: dict[str, dict[str, Any]] = {
-    "quick": {"starts": 1, "pool": 1, "cycles": 0, "recombinations": 0, "bound_work": 20.0},
+    "quick": {
+        "starts": 1,
+        "pool": 1,
+        "cycles": 0,
+        "recombinations": 0,
+        "block_tries": 1,
+        "block_cycles": 1,
+        "bound_work": 20.0,
+    },
     "normal": {},
-    "thorough": {"starts": 80, "pool": 16, "cycles": 3, "recombinations": 120, "work": 120.0, "bound_work": 1000.0},
+    "thorough": {
+        "starts": 80,
+        "pool": 16,
+        "cycles": 3,
+        "recombinations": 120,
+        "work": 120.0,
+        "block_tries": 8,
+        "block_cycles": 4,
+        "bound_work": 1000.0,
+    },
 }
 """Presets by name: what each sets differently from the defaults of `Settings`."""
