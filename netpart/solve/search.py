@@ -7,11 +7,13 @@ from functools import partial
 
 import numpy as np
 
+from netpart.netlist import Netlist
 from netpart.solve.journal import Budget, Journal
 from netpart.solve.multilevel import Problem, Solution, improve, recombine, solve_once
+from netpart.solve.settings import Settings
 from netpart.solve.starts import run_in_order
 
-__all__ = ["search_bisection"]
+__all__ = ["affordable", "search_bisection"]
 
 _START, _CYCLE, _MATE, _CHOICE = range(4)
 _BATCH = 4
@@ -40,9 +42,10 @@ def search_bisection(
         return run_in_order(tasks, jobs, budget, done)
 
     starts: list[Callable[[], Solution]] = [
-        partial(solve_once, problem, i, stream(_START, i)) for i in range(_affordable(problem, settings.starts))
+        partial(solve_once, problem, i, stream(_START, i))
+        for i in range(affordable(problem.netlist, settings, settings.starts))
     ]
-    pool = _distinct(run("start", starts))[: _affordable(problem, settings.pool)]
+    pool = _distinct(run("start", starts))[: affordable(problem.netlist, settings, settings.pool)]
 
     if settings.levels == "one":
         return pool[0]
@@ -56,7 +59,7 @@ def search_bisection(
         improved = run("cycle", tasks)
         pool = _distinct([*improved, *pool[len(improved) :]])
 
-    recombinations = _affordable(problem, settings.recombinations)
+    recombinations = affordable(problem.netlist, settings, settings.recombinations)
     for first in range(0, recombinations, _BATCH):
         if budget.exhausted or len(pool) < 2:
             break
@@ -69,10 +72,9 @@ def search_bisection(
     return pool[0]
 
 
-def _affordable(problem: Problem, tasks: int) -> int:
+def affordable(netlist: Netlist, settings: Settings, tasks: int) -> int:
     """How many tasks of a phase run within the work budget, which counts every pin of the netlist once a task."""
-    pins = max(problem.netlist.num_pins, 1)
-    return min(tasks, max(_LEAST_TASKS, int(problem.settings.work * 1e6 / pins)))
+    return min(tasks, max(_LEAST_TASKS, int(settings.work * 1e6 / max(netlist.num_pins, 1))))
 
 
 def _distinct(solutions: list[Solution]) -> list[Solution]:
