@@ -108,9 +108,9 @@ def cluster_cells(
 
 @njit(cache=True, nogil=True)
 def contract_nets(net_offsets, net_cells, net_weights, cluster, num_clusters):
-    """The nets among clusters: each cluster once, ascending; nets on one cluster dropped, equal nets united.
+    """The nets among clusters: each cluster once; nets on one cluster dropped, equal nets united.
 
-    Equal nets are found by hash and then compared pin by pin.
+    Equal nets are found by a hash that does not depend on the order of their cells, and then compared cell by cell.
 
     Returns
     -------
@@ -131,38 +131,28 @@ def contract_nets(net_offsets, net_cells, net_weights, cluster, num_clusters):
     fill = 0
     for net in range(num_nets):
         start = fill
+        code = np.uint64(0)
         for pin in range(net_offsets[net], net_offsets[net + 1]):
             number = cluster[net_cells[pin]]
             if last_net[number] != net:
                 last_net[number] = net
                 cells[fill] = number
                 fill += 1
+                word = (np.uint64(number) + np.uint64(1)) * np.uint64(0x9E3779B97F4A7C15)
+                code += (word ^ (word >> np.uint64(29))) * np.uint64(0xBF58476D1CE4E5B9)
         size = fill - start
         if size < 2:
             fill = start
             continue
-        if size <= 24:
-            for a in range(start + 1, fill):
-                number = cells[a]
-                b = a - 1
-                while b >= start and cells[b] > number:
-                    cells[b + 1] = cells[b]
-                    b -= 1
-                cells[b + 1] = number
-        else:
-            cells[start:fill] = np.sort(cells[start:fill])
-        code = np.uint64(size)
-        for a in range(start, fill):
-            code = (code ^ np.uint64(cells[a])) * np.uint64(0x9E3779B97F4A7C15)
-            code ^= code >> np.uint64(29)
+        code ^= code >> np.uint64(32)
         slot = np.int64(code & np.uint64(table_size - 1))
         twin = -1
         while table[slot] >= 0 and twin < 0:
             other = table[slot]
             if hashes[other] == code and offsets[other + 1] - offsets[other] == size:
                 twin = other
-                for a in range(size):
-                    if cells[offsets[other] + a] != cells[start + a]:
+                for pin in range(offsets[other], offsets[other + 1]):
+                    if last_net[cells[pin]] != net:
                         twin = -1
                         break
             slot = (slot + 1) & (table_size - 1)

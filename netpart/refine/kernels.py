@@ -196,7 +196,7 @@ def take_back(
         load[1 - side[cell]] += areas[cell]
         if exact:
             num_touched = _move(
-                cell,
+                np.int64(cell),
                 net_offsets,
                 net_cells,
                 cell_offsets,
@@ -351,9 +351,9 @@ def move_pass(
             if list_of[cell] == place:
                 continue
             if list_of[cell] >= 0:
-                _unlink(cell, heads, tails, nexts, prevs, list_of)
+                _unlink(np.int64(cell), heads, tails, nexts, prevs, list_of)
             at_head = tie_rule == NEWEST or (tie_rule == RANDOM and (_next_random(random) >> np.uint64(63)) == 0)
-            _link(cell, place, at_head, heads, tails, nexts, prevs, list_of)
+            _link(np.int64(cell), place, at_head, heads, tails, nexts, prevs, list_of)
             top[side[cell]] = max(top[side[cell]], bucket)
 
         chosen = -1
@@ -528,7 +528,7 @@ def swap_pass(
             load[side[cell]] -= areas[cell]
             load[1 - side[cell]] += areas[cell]
             num_touched = _move(
-                cell,
+                np.int64(cell),
                 net_offsets,
                 net_cells,
                 cell_offsets,
