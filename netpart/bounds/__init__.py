@@ -2,6 +2,7 @@
 
 from netpart.bounds.bound import Bound, next_attainable
 from netpart.bounds.certificate import Certificate, CertificateError, dump_certificates, load_certificates
+from netpart.bounds.diagonal import DiagonalResult, check_diagonal, diagonal_bound
 from netpart.bounds.eigenproof import StarMatrix, verify_eigenvalue
 from netpart.bounds.spectral import spectral_bound
 from netpart.bounds.spreading import SpreadingResult, spreading_bound
@@ -11,10 +12,13 @@ __all__ = [
     "Bound",
     "Certificate",
     "CertificateError",
+    "DiagonalResult",
     "SpreadingProof",
     "SpreadingResult",
     "StarMatrix",
+    "check_diagonal",
     "check_spreading",
+    "diagonal_bound",
     "dump_certificates",
     "load_certificates",
     "next_attainable",

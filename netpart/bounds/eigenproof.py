@@ -38,9 +38,10 @@ class StarMatrix:
 
     Attributes
     ----------
-    laplacian : (n + q, n + q) csc_array
-        Cells first, centres after them. Off-diagonal entries and spoke weights are exact by definition: the graph is the
-        one that these floating-point numbers describe. Its diagonal is the rounded sum of each row.
+    laplacian : (n + q, n + q) or (n + q + 1, n + q + 1) csc_array
+        Cells first, centres after them, then the border if there is one. Off-diagonal entries and spoke weights are
+        exact by definition: the graph is the one that these floating-point numbers describe. The diagonal is the rounded
+        sum of each row.
     num_cells : int
         n.
     longest : int
@@ -62,8 +63,22 @@ class StarMatrix:
         longest = int(np.max(np.diff(laplacian.indptr), initial=0))
         return cls(laplacian, graph.num_vertices, longest, plan_elimination(laplacian))
 
+    def with_border(self, column: NDArray[np.float64]) -> StarMatrix:
+        """One more row and column, with the (n,) entries of `column` at the cells and a diagonal of zero.
+
+        Subtracting h > 0 from that diagonal and eliminating the border adds column columnᵀ/h to the cells, at the price of
+        one negative eigenvalue (Haynsworth): a dense term of rank one for n entries.
+        """
+        size = self.laplacian.shape[0]
+        padded = sp.csc_array(np.concatenate([column, np.zeros(size - len(column))])[:, None])
+        zero = sp.csc_array((1, 1), dtype=np.float64)
+        bordered = sp.block_array([[self.laplacian, padded], [padded.T, zero]], format="csc")
+        plan = self.elimination
+        elimination = plan._replace(order=np.append(plan.order, size), num_entries=plan.num_entries + size + 1)
+        return StarMatrix(bordered, self.num_cells, self.longest + 1, elimination)
+
     def subtract(self, diagonal: NDArray[np.float64]) -> sp.csc_array:
-        """Laplacian − diag(diagonal) for (n,) or (n + q,) entries, the missing ones being zero; rounded."""
+        """Laplacian − diag(diagonal), rounded; entries missing at the end of `diagonal` are zero."""
         size = self.laplacian.shape[0]
         padded = np.concatenate([diagonal, np.zeros(size - len(diagonal))])
         return (self.laplacian - sp.diags_array(padded)).tocsc()
@@ -74,12 +89,12 @@ class StarMatrix:
         return 2e-12 * max(self.elimination.longest_column, 8)
 
     def prove_at_most(self, num_negative: int, load: NDArray[np.float64]) -> bool:
-        """Prove that clique Laplacian − diag(load) has at most so many negative eigenvalues; False says nothing.
+        """Prove that laplacian − diag(load) has at most so many negative eigenvalues; False says nothing.
 
         Parameters
         ----------
         num_negative : int
-        load : (n,) float64
+        load : (n,) float64, or as many more as there are rows
             Each entry may be rounded: by up to 8 units in the last place of |load|.
 
         Notes

@@ -110,7 +110,7 @@ def plan_elimination(matrix: sp.csc_array) -> Elimination:
     through an incomplete factorisation that drops everything, so that the cost is known before it is paid.
     """
     pattern = sp.csc_array((np.ones(matrix.nnz), matrix.indices, matrix.indptr), shape=matrix.shape)
-    heavy = (pattern + sp.diags_array(4.0 * np.diff(matrix.indptr))).tocsc()
+    heavy = (pattern + sp.diags_array(4.0 * np.diff(matrix.indptr) + 1.0)).tocsc()
     plan = spilu(
         heavy,
         drop_tol=1.0,

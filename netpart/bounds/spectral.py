@@ -26,8 +26,8 @@ __all__ = [
     "verify_spectral",
 ]
 
-MAX_OPERATIONS = 2e10
-"""Factorisations beyond so many multiplications are not tried; this many take some ten seconds and 400 MB."""
+MAX_OPERATIONS = 1e10
+"""Factorisations beyond so many multiplications are not tried; this many take some five seconds and half a GB."""
 
 _RETREAT = 1e-7
 _TRIES = 3
@@ -144,8 +144,8 @@ def most_uneven_areas(netlist: Netlist, areas: NDArray[np.float64], rules: Rules
     slack = Fraction(window.slack)
     whole = sum(map(Fraction, netlist.areas.tolist()), Fraction(0))
     own = sum(map(Fraction, areas.tolist()), Fraction(0))
-    # The sums that decide whether a partition is legal are correctly rounded, to one part in 2^53.
-    slack += whole / 2**50
+    # Sums of areas that are not whole are correctly rounded where partitions are judged, to one part in 2^53.
+    slack += whole / 2**50 if slack else 0
     lows: list[Fraction] = sorted(max(Fraction(x) - slack - (whole - own), Fraction(0)) for x in window.lower.tolist())
     highs: list[Fraction] = sorted((min(Fraction(x) + slack, own) for x in window.upper.tolist()), reverse=True)
     if sum(lows) > own or sum(highs) < own or min(highs) < 0:

@@ -139,12 +139,12 @@ class CliqueGraph:
 
         A clique of weight c contributes c (1 1ᵀ − I) on its vertices: a rank-one update and its diagonal.
         """
-        if x.ndim == 2:
-            return np.stack([self.multiply(column) for column in x.T], axis=1)
-        inner = self.clique_weights * (self.members @ x)
-        product: NDArray[np.float64] = self.pairs @ x + self.members_of @ inner
-        product -= (self.members_of @ self.clique_weights) * x
-        return product
+        columns = x if x.ndim == 2 else x[:, None]
+        product: NDArray[np.float64] = self.pairs @ columns
+        if len(self.clique_weights):
+            product += self.members_of @ (self.clique_weights[:, None] * (self.members @ columns))
+            product -= (self.members_of @ self.clique_weights)[:, None] * columns
+        return product.reshape(x.shape)
 
     def adjacency(self) -> sp.csr_array:
         """W written out pair by pair, symmetric with zero diagonal.
