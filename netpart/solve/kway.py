@@ -20,7 +20,9 @@ from netpart.solve.windows import half_window, split_blocks
 __all__ = ["partition_blocks"]
 
 
-_BLOCK_CYCLE = 4  # phases 0 to 3 of the random streams belong to the search of a bisection
+_BLOCK_CYCLE, _SHAKE = 4, 5  # phases 0 to 3 of the random streams belong to the search of a bisection
+_SMALL = 300
+_SHAKES_PER_TRY = 60
 
 
 def partition_blocks(
@@ -65,7 +67,34 @@ def partition_blocks(
         if best is None or (found.violation, found.cost) < (best.violation, best.cost):
             best = found
     assert best is not None
+    if netlist.num_cells <= _SMALL:
+        best = _shake(netlist, window, pinned, best, objective, settings, seed, budget)
     return best.blocks
+
+
+def _shake(
+    netlist: Netlist,
+    window: AreaWindow,
+    pinned: NDArray[np.int32],
+    best: RefinedBlocks,
+    objective: str,
+    settings: Settings,
+    seed: int,
+    budget: Budget,
+) -> RefinedBlocks:
+    """Small netlists: refine again after moving a random part of the cells to random blocks; the best is kept."""
+    stream = np.random.default_rng(np.random.SeedSequence(seed, spawn_key=(_SHAKE,)))
+    free = np.flatnonzero(pinned == FREE)
+    for turn in range(settings.block_tries * _SHAKES_PER_TRY):
+        if budget.exhausted or not len(free):
+            break
+        blocks = best.blocks.copy()
+        chosen = free[stream.random(len(free)) < (0.2, 0.4, 1.0)[turn % 3]]
+        blocks[chosen] = stream.integers(0, len(window.lower), len(chosen))
+        found = refine_blocks(netlist, blocks, window, objective=objective, passes=20, stall=netlist.num_cells, fixed=pinned)
+        if (found.violation, found.cost) < (best.violation, best.cost):
+            best = found
+    return best
 
 
 def _improve_together(
