@@ -70,6 +70,7 @@ def run(arguments: argparse.Namespace) -> int:
         arguments.objective or "cut-nets",
         work=arguments.work,
         time_limit=arguments.time_limit,
+        diagonal=True,
         jobs=arguments.jobs,
         journal=journal,
         budget=Budget(),
