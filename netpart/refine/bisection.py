@@ -18,6 +18,13 @@ _WALKED_NET_SIZE = 50
 _USUAL_CELL = 4.0
 
 
+def spare_room(netlist: Netlist, window: AreaWindow) -> float:
+    """By how much blocks may leave their windows during a pass: a window too narrow for a cell would end it at once."""
+    width = float(np.min(window.upper - window.lower))
+    usual = min(float(netlist.areas.max()), _USUAL_CELL * float(netlist.areas.mean()))
+    return max(usual - width / 2, 0.0)
+
+
 class Bisection:
     """A bisection while it is being improved: the side of each cell, with counts, gains and areas kept up to date.
 
@@ -71,10 +78,7 @@ class Bisection:
         whole = degree == 0 or (degree <= _MAX_REACH and bool(np.all(netlist.net_weights == np.floor(netlist.net_weights))))
         self._reach = max(int(degree), 1) if whole else _MAX_REACH
         self._scale = 1.0 if whole else _MAX_REACH / degree
-        # A window too narrow for a single cell to move within it would stop every pass at once.
-        width = float(np.min(window.upper - window.lower))
-        usual = min(float(netlist.areas.max()), _USUAL_CELL * float(netlist.areas.mean()))
-        self._margin = max(usual - width / 2, 0.0)
+        self._margin = spare_room(netlist, window)
         self._moved = np.empty(num_cells, np.int32)
         self._touched = np.empty(num_cells, np.int32)
         self._is_touched = np.zeros(num_cells, np.bool_)

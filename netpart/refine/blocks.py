@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 
 from netpart.netlist import FREE, OBJECTIVES, AreaWindow, Netlist
 from netpart.refine import blocks_kernels
+from netpart.refine.bisection import spare_room
 
 __all__ = ["RefinedBlocks", "refine_blocks"]
 
@@ -74,6 +75,7 @@ def refine_blocks(
             movable,
             window.lower,
             window.upper,
+            spare_room(netlist, window),
             goal,
             assigned,
             counts,

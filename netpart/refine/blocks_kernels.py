@@ -12,13 +12,27 @@ from numba import njit
 __all__ = ["block_pass", "count_blocks"]
 
 
+_EXTRA_SPAN = 0.05  # what a further block of a cut net counts for the choice of a move, where only cut nets cost
+_RETRIES = 8
+
+
 @njit(cache=True, nogil=True)
 def _price(objective, span):
+    """The cost of a net of weight 1."""
     if span <= 1:
         return 0.0
     if objective == 0:
         return 1.0
     return span - 1.0 if objective == 1 else 1.0 * span
+
+
+@njit(cache=True, nogil=True)
+def _lure(objective, span):
+    """The price that moves are chosen by: it also tells which of two cut nets is nearer to being whole."""
+    price = _price(objective, span)
+    if objective == 0 and span > 2:
+        price += _EXTRA_SPAN * (span - 2)
+    return price
 
 
 @njit(cache=True, nogil=True)
@@ -40,11 +54,26 @@ def count_blocks(net_offsets, net_cells, net_weights, blocks, objective, counts,
 
 @njit(cache=True, nogil=True)
 def _best_move(
-    cell, cell_offsets, cell_nets, net_weights, areas, lower, upper, objective, blocks, counts, spans, load, bonus, tiny
+    cell,
+    cell_offsets,
+    cell_nets,
+    net_weights,
+    areas,
+    lower,
+    upper,
+    margin,
+    objective,
+    blocks,
+    counts,
+    spans,
+    load,
+    bonus,
+    tiny,
 ):
-    """The best legal move of a cell: its gain and its target, −1 where there is none.
+    """The best allowed move of a cell: its gain and its target, −1 where there is none.
 
-    Legal is what keeps both blocks in their windows, or lessens the sum of the violations.
+    Allowed is what leaves no window by more than `margin`, or lessens the sum of the violations. Of equal targets the one
+    with more room is taken.
     """
     source = blocks[cell]
     num_blocks = len(load)
@@ -55,23 +84,23 @@ def _best_move(
         span = spans[net]
         left = span - 1 if counts[net, source] == 1 else span
         weight = net_weights[net]
-        apart = _price(objective, left + 1)
-        base += weight * (_price(objective, span) - apart)
+        apart = _lure(objective, left + 1)
+        base += weight * (_lure(objective, span) - apart)
         if span > 1:
-            together = weight * (apart - _price(objective, left))
+            together = weight * (apart - _lure(objective, left))
             for block in range(num_blocks):
                 if counts[net, block] > 0:
                     bonus[block] += together
     area = areas[cell]
     remaining = load[source] - area
-    source_fits = remaining >= lower[source] - tiny
+    source_fits = remaining >= lower[source] - margin - tiny
     best = -1
     best_gain = -np.inf
     for block in range(num_blocks):
         if block == source:
             continue
         filled = load[block] + area
-        if not (source_fits and filled <= upper[block] + tiny):
+        if not (source_fits and filled <= upper[block] + margin + tiny):
             before = max(0.0, lower[source] - load[source], load[source] - upper[source])
             before += max(0.0, lower[block] - load[block], load[block] - upper[block])
             after = max(0.0, lower[source] - remaining, remaining - upper[source])
@@ -87,19 +116,27 @@ def _best_move(
 
 
 @njit(cache=True, nogil=True)
-def _move(cell, target, cell_offsets, cell_nets, areas, blocks, counts, spans, load):
+def _move(cell, target, cell_offsets, cell_nets, net_weights, areas, objective, blocks, counts, spans, load):
+    """Move a cell and return what the cost falls by."""
     source = blocks[cell]
+    gain = 0.0
     for at in range(cell_offsets[cell], cell_offsets[cell + 1]):
         net = cell_nets[at]
+        before = spans[net]
+        after = before
         counts[net, source] -= 1
         if counts[net, source] == 0:
-            spans[net] -= 1
+            after -= 1
         if counts[net, target] == 0:
-            spans[net] += 1
+            after += 1
         counts[net, target] += 1
+        if after != before:
+            spans[net] = after
+            gain += net_weights[net] * (_price(objective, before) - _price(objective, after))
     load[source] -= areas[cell]
     load[target] += areas[cell]
     blocks[cell] = target
+    return gain
 
 
 @njit(cache=True, nogil=True)
@@ -149,6 +186,7 @@ def block_pass(
     movable,
     lower,
     upper,
+    margin,
     objective,
     blocks,
     counts,
@@ -160,8 +198,9 @@ def block_pass(
 ):
     """One pass: the best move first, every cell at most once, then back to the best prefix by (violation, cost).
 
-    A heap holds cells by a gain that may be out of date; a cell is moved only with the gain it has at that moment. Cells
-    of a net are valued anew when a count falls to 0 or 1 or rises to 1 or 2, for nets up to `max_net_size`.
+    A heap holds cells by gains that may be out of date; a cell moves only with the gain it has at that moment. Cells of a
+    net are valued anew when a count falls to 0 or 1 or rises to 1 or 2, for nets up to `max_net_size`. Cells that no block
+    has room for wait, and some of them are tried again after every move.
 
     Returns
     -------
@@ -176,12 +215,10 @@ def block_pass(
     for block in range(num_blocks):
         violation += max(0.0, lower[block] - load[block], load[block] - upper[block])
     bonus = np.empty(num_blocks)
-    keys = np.full(num_cells, -np.inf)
     locked = np.zeros(num_cells, np.bool_)
-    capacity = num_cells + 16
-    heap_keys = np.empty(capacity)
-    heap_cells = np.empty(capacity, np.int32)
-    size = 0
+    touched = np.empty(num_cells, np.int32)
+    is_touched = np.zeros(num_cells, np.bool_)
+    num_touched = 0
     for cell in range(num_cells):
         if not movable[cell]:
             locked[cell] = True
@@ -193,44 +230,85 @@ def block_pass(
                     at_border = True
                     break
         if at_border:
-            gain, target = _best_move(
-                cell, cell_offsets, cell_nets, net_weights, areas, lower, upper, objective, blocks, counts, spans, load,
-                bonus, tiny,
-            )  # fmt: skip
-            if target >= 0:
-                keys[cell] = gain
-                size = _push(heap_keys, heap_cells, size, gain, cell)
+            touched[num_touched] = cell
+            num_touched += 1
 
+    keys = np.full(num_cells, -np.inf)  # of the valid heap entry of a cell; none where −inf
+    target_of = np.empty(num_cells, np.int32)
+    valued_at = np.full(num_cells, -1, np.int32)
+    capacity = num_cells + 16
+    heap_keys = np.empty(capacity)
+    heap_cells = np.empty(capacity, np.int32)
+    size = 0
+    waiting = np.empty(num_cells, np.int32)  # a ring
+    is_waiting = np.zeros(num_cells, np.bool_)
+    first_waiting = 0
+    num_waiting = 0
     moved = np.empty(num_cells, np.int32)
     origin = np.empty(num_cells, np.int32)
     num_moved = 0
     best_prefix = 0
     best_cost = cost
     best_violation = violation
-    while size > 0 and num_moved - best_prefix < stall:
+    while True:
+        for i in range(num_touched):
+            cell = touched[i]
+            is_touched[cell] = False
+            if locked[cell]:
+                continue
+            gain, target = _best_move(
+                cell,
+                cell_offsets,
+                cell_nets,
+                net_weights,
+                areas,
+                lower,
+                upper,
+                margin,
+                objective,
+                blocks,
+                counts,
+                spans,
+                load,
+                bonus,
+                tiny,
+            )
+            target_of[cell] = target
+            valued_at[cell] = num_moved
+            if target < 0:
+                keys[cell] = -np.inf
+                if not is_waiting[cell]:
+                    is_waiting[cell] = True
+                    waiting[(first_waiting + num_waiting) % num_cells] = cell
+                    num_waiting += 1
+            elif gain != keys[cell]:
+                keys[cell] = gain
+                if size == capacity:
+                    heap_keys = np.concatenate((heap_keys, np.empty(capacity)))
+                    heap_cells = np.concatenate((heap_cells, np.empty(capacity, np.int32)))
+                    capacity *= 2
+                size = _push(heap_keys, heap_cells, size, gain, cell)
+        num_touched = 0
+        if size == 0 or num_moved - best_prefix >= stall:
+            break
         cell = heap_cells[0]
         key = heap_keys[0]
         size = _pop(heap_keys, heap_cells, size)
         if locked[cell] or key != keys[cell]:
             continue
-        gain, target = _best_move(
-            cell, cell_offsets, cell_nets, net_weights, areas, lower, upper, objective, blocks, counts, spans, load,
-            bonus, tiny,
-        )  # fmt: skip
-        if target < 0:
-            keys[cell] = -np.inf
+        keys[cell] = -np.inf
+        if valued_at[cell] != num_moved:
+            touched[0] = cell
+            num_touched = 1
             continue
-        if gain < key - 1e-12:
-            keys[cell] = gain
-            size = _push(heap_keys, heap_cells, size, gain, cell)
-            continue
+
         source = blocks[cell]
+        target = target_of[cell]
         moved[num_moved] = cell
         origin[num_moved] = source
         num_moved += 1
         locked[cell] = True
-        _move(cell, target, cell_offsets, cell_nets, areas, blocks, counts, spans, load)
-        cost -= gain
+        cost -= _move(cell, target, cell_offsets, cell_nets, net_weights, areas, objective, blocks, counts, spans, load)
         violation = 0.0
         for block in range(num_blocks):
             violation += max(0.0, lower[block] - load[block], load[block] - upper[block])
@@ -246,20 +324,19 @@ def block_pass(
                 continue
             for pin in range(net_offsets[net], net_offsets[net + 1]):
                 other = net_cells[pin]
-                if locked[other]:
-                    continue
-                gain, target_of_other = _best_move(
-                    other, cell_offsets, cell_nets, net_weights, areas, lower, upper, objective, blocks, counts, spans,
-                    load, bonus, tiny,
-                )  # fmt: skip
-                if target_of_other < 0 or gain == keys[other]:
-                    continue
-                keys[other] = gain
-                if size == capacity:
-                    heap_keys = np.concatenate((heap_keys, np.empty(capacity)))
-                    heap_cells = np.concatenate((heap_cells, np.empty(capacity, np.int32)))
-                    capacity *= 2
-                size = _push(heap_keys, heap_cells, size, gain, other)
+                if not locked[other] and not is_touched[other]:
+                    is_touched[other] = True
+                    touched[num_touched] = other
+                    num_touched += 1
+        for _ in range(min(num_waiting, _RETRIES)):
+            other = waiting[first_waiting]
+            first_waiting = (first_waiting + 1) % num_cells
+            num_waiting -= 1
+            is_waiting[other] = False
+            if not locked[other] and not is_touched[other]:
+                is_touched[other] = True
+                touched[num_touched] = other
+                num_touched += 1
     for i in range(num_moved - 1, best_prefix - 1, -1):
-        _move(moved[i], origin[i], cell_offsets, cell_nets, areas, blocks, counts, spans, load)
+        _move(moved[i], origin[i], cell_offsets, cell_nets, net_weights, areas, objective, blocks, counts, spans, load)
     return best_prefix, best_cost

@@ -58,3 +58,18 @@ def test_overfull_blocks_are_emptied() -> None:
     window = Rules.from_request(4, shares=[10, 20, 30, 40], tolerance="10%").window(netlist)
     found = refine_blocks(netlist, np.zeros(64, np.int32), window, stall=1000)
     assert found.violation == 0
+
+
+def test_equal_blocks_without_any_tolerance_are_still_improved() -> None:
+    side = 12
+    grid = np.arange(side * side).reshape(side, side)
+    nets = [*np.stack((grid[:, :-1], grid[:, 1:]), -1).reshape(-1, 2), *np.stack((grid[:-1], grid[1:]), -1).reshape(-1, 2)]
+    netlist = make_netlist([net.tolist() for net in nets], side * side)
+    window = Rules.from_request(4, tolerance=0).window(netlist)
+    stripes = (np.arange(side * side) // (side * side // 4)).astype(np.int32)
+    stirred = stripes.copy()
+    stirred[::7] = np.random.default_rng(0).permutation(stirred[::7])
+    found = refine_blocks(netlist, stirred, window, passes=20)
+    assert found.violation == 0
+    assert found.cost < 0.5 * plain_costs(netlist, stirred)["cut-nets"]
+    assert found.cost >= 2 * side  # the cheapest four quarters of a square mesh: counted
