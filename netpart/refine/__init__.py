@@ -2,6 +2,7 @@
 
 from netpart.refine.bisection import TIE_RULES, Bisection, grow_bisection, random_bisection
 from netpart.refine.blocks import RefinedBlocks, refine_blocks
+from netpart.refine.flow import refine_by_flow, refine_pairs
 
 __all__ = [
     "TIE_RULES",
@@ -10,4 +11,6 @@ __all__ = [
     "grow_bisection",
     "random_bisection",
     "refine_blocks",
+    "refine_by_flow",
+    "refine_pairs",
 ]

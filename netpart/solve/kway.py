@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 
 from netpart.coarsen import build_hierarchy
 from netpart.netlist import FREE, AreaWindow, Netlist, restrict
-from netpart.refine import RefinedBlocks, refine_blocks
+from netpart.refine import RefinedBlocks, refine_blocks, refine_pairs
 from netpart.solve.journal import Budget, Journal
 from netpart.solve.multilevel import Problem
 from netpart.solve.search import affordable, search_bisection
@@ -67,6 +67,19 @@ def partition_blocks(
         if best is None or (found.violation, found.cost) < (best.violation, best.cost):
             best = found
     assert best is not None
+    if settings.flow and best.violation == 0 and not budget.exhausted:
+        blocks, gained = refine_pairs(
+            netlist,
+            best.blocks,
+            window,
+            objective,
+            fixed=pinned,
+            corridor_share=settings.flow_share,
+            max_cells=settings.flow_cells,
+        )
+        if gained > 0:
+            best = refine_blocks(netlist, blocks, window, objective=objective, stall=settings.stall, fixed=pinned)
+            journal.note_cut("blocks", 0, best.cost, legal=best.violation == 0)
     if netlist.num_cells <= _SMALL:
         best = _shake(netlist, window, pinned, best, objective, settings, seed, budget)
     return best.blocks

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from netpart.coarsen import Hierarchy, Level, build_hierarchy
 from netpart.netlist import AreaWindow, Netlist, UsageError
-from netpart.refine import Bisection, grow_bisection, random_bisection
+from netpart.refine import Bisection, grow_bisection, random_bisection, refine_by_flow
 from netpart.solve.settings import Settings
 
 __all__ = ["Problem", "Solution", "improve", "recombine", "solve_once"]
@@ -93,8 +93,27 @@ def _cycle(problem: Problem, solution: Solution, keep: Blocks, rng: np.random.Ge
         coarse[level.cluster] = blocks
         blocks = coarse
     start = _refine(problem, hierarchy, len(hierarchy.levels) - 1, blocks, rng)
-    found = _descend(problem, hierarchy, [start], rng)
+    found = _polish(problem, _descend(problem, hierarchy, [start], rng), rng)
     return min(found, solution, key=lambda entry: entry.key)
+
+
+def _polish(problem: Problem, solution: Solution, rng: np.random.Generator) -> Solution:
+    """Minimum cuts through a corridor around the cut, then passes of moves again; never worse."""
+    settings = problem.settings
+    if not settings.flow or solution.violation > 0:
+        return solution
+    blocks, gained = refine_by_flow(
+        problem.netlist,
+        solution.blocks,
+        problem.window,
+        fixed=problem.fixed,
+        corridor_share=settings.flow_share,
+        max_cells=settings.flow_cells,
+    )
+    if gained <= 0:
+        return solution
+    whole = Hierarchy((Level(problem.netlist, problem.fixed),))
+    return min(_finish(problem, _refine(problem, whole, 0, blocks, rng)), solution, key=lambda entry: entry.key)
 
 
 def _hierarchy(problem: Problem, rng: np.random.Generator, keep: Blocks | None) -> Hierarchy:
@@ -137,7 +156,10 @@ def _descend(problem: Problem, hierarchy: Hierarchy, tries: list[Bisection], rng
         small = hierarchy.levels[number - 1].netlist.num_cells <= _SMALL_LEVEL
         kept = tries[: (len(tries) + 1) // 2 if small else 1]
         tries = [_refine(problem, hierarchy, number - 1, hierarchy.project(work.blocks, number), rng) for work in kept]
-    work = min(tries, key=lambda work: (work.violation, work.cut))
+    return _finish(problem, min(tries, key=lambda work: (work.violation, work.cut)))
+
+
+def _finish(problem: Problem, work: Bisection) -> Solution:
     middle = 0.5 * float(problem.window.lower[0] + problem.window.upper[0])
     return Solution(work.blocks, work.violation, work.cut, abs(float(work.load[0]) - middle))
 
