@@ -140,6 +140,25 @@ def test_pierced_divisions_are_legal_and_their_flow_is_their_cut(
     assert divided.flow[local_side[divided.pin_cell] == 0].sum() == divided.cut
 
 
+@pytest.mark.parametrize("seed", range(40))
+def test_long_searches_keep_the_flow_equal_to_the_cut(seed: int) -> None:
+    # rows of up to 150 cells with near neighbours: many cells are pierced, on both sides
+    rng = np.random.default_rng(seed)
+    num_cells = int(rng.integers(60, 150))
+    centres = rng.integers(0, num_cells, int(rng.uniform(0.8, 2) * num_cells))
+    nets = [np.clip(c + rng.integers(-6, 7, rng.integers(2, 6)), 0, num_cells - 1).tolist() for c in centres]
+    weights = rng.integers(1, 5, len(nets)).tolist() if seed % 2 else None
+    netlist = make_netlist(nets, num_cells, weights=weights)
+    window = Rules.from_request(2, tolerance="4%").window(netlist)
+    divided = _Divided(netlist, rng.integers(0, 2, num_cells), 0, num_cells - 1, window)
+    divided.check_flow()
+    counted = Partition.from_blocks(netlist, divided.blocks, 2)
+    assert divided.cut >= 0
+    assert not window.violation(counted.block_areas).any()
+    assert counted.cut_nets == divided.cut + divided.constant >= _scipy_flow(netlist, 0, num_cells - 1)
+    assert divided.flow[np.concatenate(([0, 1], divided.blocks[1:-1]))[divided.pin_cell] == 0].sum() == divided.cut
+
+
 @st.composite
 def _bisections(draw: st.DrawFn, max_cells: int = 12) -> tuple[Netlist, np.ndarray, np.ndarray, AreaWindow]:
     netlist = draw(netlists(min_cells=4, max_cells=max_cells, max_nets=20))
