@@ -27,7 +27,7 @@ def refine_by_flow(
     fixed: NDArray[np.int32] | None = None,
     corridor_share: float = 0.2,
     smallest_share: float = 0.1,
-    max_cells: int = 25_000,
+    max_cells: int = 60_000,
     max_rounds: int = 20,
     sideways: bool = False,
 ) -> tuple[NDArray[np.int32], float]:
@@ -92,14 +92,21 @@ def refine_by_flow(
     first_cut = cut
     share = min(corridor_share, _LARGEST_SHARE)
     smallest = min(smallest_share, share)
+    failed_size = 0
     for _ in range(max_rounds):
-        found = _divide_corridor(netlist, blocks, window, movable, capacities, is_cut, load, share, max_cells)
+        corridor = _grow_corridor(netlist, blocks, movable, is_cut, share * float(load.sum()), max_cells)
+        # a corridor as large as the one that failed is the same again, limited by other things than its share
+        found = None
+        if len(corridor) != failed_size:
+            found = _divide_corridor(netlist, blocks, window, corridor, capacities, is_cut, load)
+        failed_size = len(corridor)
         gained = False
         if found is not None:
             new_load = _sum_areas(found, netlist.areas)
             new_is_cut, new_cut = _count_cut(netlist, found)
             old, new = (cut, imbalance), (new_cut, abs(float(new_load[0]) - middle))
             if (new < old or (sideways and new == old)) and not window.violation(new_load).any():
+                failed_size = 0
                 gained = new_cut < cut
                 blocks, load, is_cut, (cut, imbalance) = found, new_load, new_is_cut, new
         if gained:
@@ -111,29 +118,44 @@ def refine_by_flow(
     return blocks, first_cut - cut
 
 
+def _grow_corridor(
+    netlist: Netlist,
+    blocks: NDArray[np.int32],
+    movable: NDArray[np.bool_],
+    is_cut: NDArray[np.bool_],
+    area: float,
+    max_cells: int,
+) -> NDArray[np.int32]:
+    """The cells of a corridor of at most this area and so many cells on each side."""
+    # one cell at least stays beyond the corridor, as source or sink
+    cells_left = np.minimum(np.bincount(blocks, minlength=2) - 1, max_cells)
+    return corridor_kernels.grow_corridor(
+        netlist.net_offsets,
+        netlist.net_cells,
+        netlist.cell_offsets,
+        netlist.cell_nets,
+        netlist.areas,
+        blocks,
+        movable,
+        is_cut,
+        _WALKED_NET_SIZE,
+        np.full(2, area),
+        cells_left,
+    )
+
+
 def _divide_corridor(
     netlist: Netlist,
     blocks: NDArray[np.int32],
     window: AreaWindow,
-    movable: NDArray[np.bool_],
+    corridor: NDArray[np.int32],
     capacities: NDArray[np.int64],
     is_cut: NDArray[np.bool_],
     load: NDArray[np.float64],
-    share: float,
-    max_cells: int,
 ) -> NDArray[np.int32] | None:
-    """One corridor, divided anew; None where there is no division as good as the present one."""
-    by_net, by_cell = (netlist.net_offsets, netlist.net_cells), (netlist.cell_offsets, netlist.cell_nets)
-    # one cell at least stays beyond the corridor, as source or sink
-    cells_left = np.minimum(np.bincount(blocks, minlength=2) - 1, max_cells)
-    area_left = np.full(2, share * float(load.sum()))
-    corridor = corridor_kernels.grow_corridor(
-        *by_net, *by_cell, netlist.areas, blocks, movable, is_cut, _WALKED_NET_SIZE, area_left, cells_left
-    )
-    if not len(corridor):
-        return None
+    """The blocks after a new division of the corridor; None where there is none as good as the present one."""
     nets, net_start, pin_cell, pin_net, cell_start, cell_pin = corridor_kernels.build_network(
-        *by_net, *by_cell, blocks, corridor
+        netlist.net_offsets, netlist.net_cells, netlist.cell_offsets, netlist.cell_nets, blocks, corridor
     )
     sides, areas = blocks[corridor], netlist.areas[corridor]
     room = capacities[nets]
@@ -195,7 +217,7 @@ def refine_pair(
     *,
     fixed: NDArray[np.int32] | None = None,
     corridor_share: float = 0.2,
-    max_cells: int = 25_000,
+    max_cells: int = 60_000,
     max_rounds: int = 20,
 ) -> tuple[NDArray[np.int32], float]:
     """Improve the division between two of k blocks; the cells of the others stay where they are.
@@ -269,7 +291,7 @@ def refine_pairs(
     *,
     fixed: NDArray[np.int32] | None = None,
     corridor_share: float = 0.2,
-    max_cells: int = 25_000,
+    max_cells: int = 60_000,
     max_rounds: int = 10,
 ) -> tuple[NDArray[np.int32], float]:
     """Improve pair after pair of k blocks that share nets, until no pair with a changed block brings anything.
