@@ -27,14 +27,14 @@ from dataclasses import dataclass
 from fractions import Fraction
 
 import numpy as np
-import scipy.sparse as sp
 from numpy.typing import NDArray
 
 from netpart.bounds.bound import Bound, next_attainable
 from netpart.bounds.certificate import Certificate, CertificateError
 from netpart.bounds.eigenproof import StarMatrix
-from netpart.bounds.semidefinite import find_shift, optimize_diagonal, start_vectors, start_weight
-from netpart.bounds.spectral import MAX_OPERATIONS, bounding_weights
+from netpart.bounds.netgraph import NetParts
+from netpart.bounds.semidefinite import GraphEnergy, NetEnergy, Vectors, find_shift, minimize_energy
+from netpart.bounds.spectral import MAX_OPERATIONS
 from netpart.expand import CliqueGraph
 from netpart.netlist import OBJECTIVES, Netlist, Rules
 
@@ -52,6 +52,8 @@ BORDER_SCALE = 1 / 16
 """The border is this multiple of b: rows of like size round alike."""
 
 _STAIRS = 3
+_POWERS = (4.0, 16.0)
+_LEAST = 1e-11
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -72,10 +74,14 @@ class Band:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class DiagonalProof:
-    """What is claimed and can be checked: (1) holds for `diagonal` and α = 1/(256 `resistance`), both exact as given."""
+    """What is claimed and can be checked: (1) holds for `diagonal` and α = 1/(256 `resistance`), both exact as given.
+
+    `shares` say how the nets spread over their parts (`NetParts`); None where the graph was given from outside.
+    """
 
     diagonal: NDArray[np.float64]
     resistance: float
+    shares: NDArray[np.float64] | None = None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -92,14 +98,13 @@ def diagonal_bound(
     objective: str = "cut-nets",
     *,
     graph: CliqueGraph | None = None,
-    max_products: int = 800,
+    max_calls: int = 1000,
     max_operations: float = MAX_OPERATIONS,
 ) -> DiagonalResult | None:
     """A verified lower bound on the cost of every legal partition by diagonal correction, or None where none is proved.
 
-    For two blocks it is never smaller than the spectral bound of the same graph but for the precision of the optimisation,
-    usually two to three times as large, and takes that much longer to find. Netlists in several parts need no special
-    care. Fixed cells are not looked at.
+    It is usually two to four times the spectral bound, and takes ten times as long to find. Netlists in several parts
+    need no special care. Fixed cells are not looked at.
 
     Parameters
     ----------
@@ -109,20 +114,21 @@ def diagonal_bound(
         One of `netlist.OBJECTIVES`.
     graph : CliqueGraph, optional
         A graph over the cells whose cut is known never to exceed the cost, for every partition into as many blocks.
-        Default: the clique expansion with `bounding_weights`.
-    max_products : int
-        Products with the Laplacian that the optimisation may take, for each block with limits of its own.
+        Default: the best mixture of the nets' parts that is found, see `netgraph`.
+    max_calls : int
+        Evaluations that the optimisation may take, about, for each block with limits of its own.
     max_operations : float
         Give up where a factorisation would take more multiplications.
     """
     started = time.monotonic()
-    expansion = _expand(netlist, rules, objective) if graph is None else graph
-    if not expansion.degrees.any():
+    parts = NetParts.from_netlist(netlist, rules.num_blocks, objective) if graph is None else None
+    whole = CliqueGraph.from_netlist(netlist, parts.whole_costs) if parts is not None else graph
+    if whole is None or not whole.degrees.any():
         return None
     proofs: dict[int, DiagonalProof] = {}
 
     def prove(block: int, band: Band) -> Fraction | None:
-        found = bound_band(expansion, band, max_products, max_operations)
+        found = bound_band(whole, parts, band, max_calls, max_operations)
         if found is not None:
             proofs[block] = found[0]
         return None if found is None else found[1]
@@ -131,14 +137,17 @@ def diagonal_bound(
     if value <= 0:
         return None
     bound = Bound("diagonal", value, True, time.monotonic() - started, "semidefinite by factors with measured error")
-    if graph is not None:
+    if parts is None:
         return DiagonalResult(bound, None)
     diagonals = np.zeros((len(proofs), netlist.num_cells + 1))
+    shares = np.zeros((len(proofs), parts.num_shares))
     for i, proof in enumerate(proofs.values()):
         diagonals[i, : len(proof.diagonal)] = proof.diagonal
+        shares[i] = proof.shares
     arrays = {
         "objective": np.array([OBJECTIVES.index(objective)]),
         "blocks": np.array(list(proofs), dtype=np.int64),
+        "shares": shares,
         "diagonals": diagonals,
         "resistances": np.array([proof.resistance for proof in proofs.values()]),
     }
@@ -159,13 +168,15 @@ def check_diagonal(netlist: Netlist, rules: Rules, certificate: Certificate) -> 
     resistances = certificate.array("resistances", "f", (len(blocks),))
     if not 0 <= which < len(OBJECTIVES):
         raise CertificateError(f"diagonal certificate: there is no objective {which}")
-    graph = _expand(netlist, rules, OBJECTIVES[which])
+    parts = NetParts.from_netlist(netlist, rules.num_blocks, OBJECTIVES[which])
+    shares = certificate.array("shares", "f", (len(blocks), parts.num_shares))
 
     def prove(block: int, band: Band) -> Fraction | None:
         if block not in blocks:
             return None
         i, size = blocks.index(block), len(band.row)
-        matrix = StarMatrix.from_graph(_widen(graph, size)).with_border(band.row * BORDER_SCALE)
+        graph = parts.build_graph(shares[i]).widen(size)
+        matrix = StarMatrix.from_graph(graph).with_border(band.row * BORDER_SCALE)
         found = verify_diagonal(matrix, band, DiagonalProof(diagonals[i, :size], float(resistances[i])))
         if found is None:
             raise CertificateError(f"diagonal certificate: the proof for block {rules.block_names[block]} does not hold")
@@ -218,30 +229,49 @@ def verify_diagonal(matrix: StarMatrix, band: Band, proof: DiagonalProof) -> Fra
 
 
 def bound_band(
-    graph: CliqueGraph, band: Band, max_products: int, max_operations: float
+    whole: CliqueGraph, parts: NetParts | None, band: Band, max_calls: int, max_operations: float
 ) -> tuple[DiagonalProof, Fraction] | None:
-    """A proof, and the bound it gives, on the cut of a graph between a legal set and the rest; None where none is found."""
-    size = len(band.row)
-    graph = _widen(graph, size)
+    """A proof, and the bound it gives, on the cut between a legal set and the rest; None where none is found.
+
+    Parameters
+    ----------
+    whole : CliqueGraph
+        Where to start.
+    parts : NetParts or None
+        Whose best mixture is to take the place of that graph.
+    """
+    size, radius = len(band.row), float(band.radius)
+    graph, shares = whole.widen(size), None
+    state = Vectors.start(graph.degrees, band.row, radius)
+    minimize_energy(GraphEnergy(graph), band.row, radius, state, max_calls // 2)
+    if parts is not None:
+        for power in _POWERS:
+            energy = NetEnergy(parts, power, graph.degrees)
+            minimize_energy(energy, band.row, radius, state, max_calls // 4)
+        energy(state.units)
+        shares = energy.shares
+        graph = parts.build_graph(shares).widen(size)
+        minimize_energy(GraphEnergy(graph), band.row, radius, state, max_calls // 4, 1e-4)
     matrix = StarMatrix.from_graph(graph)
     if matrix.elimination.num_operations > max_operations:
         return None
     matrix = matrix.with_border(band.row * BORDER_SCALE)
-    radius, weight, vectors = float(band.radius), start_weight(graph, band.row), start_vectors(size)
-    for stair in range(_STAIRS):
-        diagonal, weight, vectors = optimize_diagonal(graph, band.row, radius, weight, vectors, max_products // (stair + 1))
-        resistance = BORDER_SCALE**2 / max(weight, 1e-9 * start_weight(graph, band.row))
-        shift, direction = find_shift(matrix, diagonal, resistance)
-        if direction is None or shift * size <= 2e-3 * abs(float(diagonal.sum())):
+    for _ in range(_STAIRS):
+        resistance = BORDER_SCALE**2 / max(
+            state.weight, _LEAST * float(graph.degrees.mean()) / float(np.abs(band.row).sum())
+        )
+        shift, direction = find_shift(matrix, state.diagonal, resistance)
+        if direction is None or shift * size <= 1e-3 * abs(float(state.diagonal.sum())):
             break
         # Too few dimensions: the vectors are stuck at a saddle that this direction leads away from (N. Boumal, V. Voroninski
         # and A. Bandeira, Advances in Neural Information Processing Systems 29, 2016).
-        vectors = np.column_stack([vectors, direction * (0.1 / np.max(np.abs(direction)))])
+        state.turn(direction)
+        minimize_energy(GraphEnergy(graph), band.row, radius, state, max_calls // 4, 1e-4)
     if not math.isfinite(shift):
         return None
-    room = matrix.usual_margin * (matrix.laplacian.diagonal()[:size] + np.abs(diagonal))
+    room = matrix.usual_margin * (matrix.laplacian.diagonal()[:size] + np.abs(state.diagonal))
     for factor in (6.0, 60.0, 600.0):
-        proof = DiagonalProof(diagonal + shift + factor * room, resistance)
+        proof = DiagonalProof(state.diagonal + shift + factor * room, resistance, shares)
         found = verify_diagonal(matrix, band, proof)
         if found is not None:
             return proof, found
@@ -266,19 +296,3 @@ def _combine(netlist: Netlist, rules: Rules, objective: str, prove: Callable[[in
     # Two blocks: terminals are twice the cut nets, so they rise in steps of twice the weights' common divisor.
     step = 2 if rules.num_blocks == 2 and objective == "terminals" else 1
     return step * next_attainable(value / step, netlist) if value > 0 else 0.0
-
-
-def _expand(netlist: Netlist, rules: Rules, objective: str) -> CliqueGraph:
-    return CliqueGraph.from_netlist(netlist, bounding_weights(netlist, rules.num_blocks, objective))
-
-
-def _widen(graph: CliqueGraph, size: int) -> CliqueGraph:
-    """The graph, with one more vertex and no more edges where `size` asks for it."""
-    if size == graph.num_vertices:
-        return graph
-    n, q = graph.num_vertices, len(graph.clique_weights)
-    pairs = sp.csr_array(
-        (graph.pairs.data, graph.pairs.indices, np.append(graph.pairs.indptr, graph.pairs.nnz)), (n + 1, n + 1)
-    )
-    members = sp.csr_array((graph.members.data, graph.members.indices, graph.members.indptr), (q, n + 1))
-    return CliqueGraph.from_parts(pairs, members, graph.clique_weights)

@@ -3,6 +3,10 @@
 Unit vectors v_i are to minimise Σ L_ij v_i·v_j under |Σ b_i v_i| ≤ r (S. Burer and R. D. C. Monteiro, Mathematical
 Programming 95, 2003): an augmented Lagrangian for the one constraint, limited-memory BFGS for the vectors. Its multipliers
 are the diagonal D and the weight α that the bound is made of. What is found here is only claimed; `diagonal` proves it.
+
+The graph may be chosen with them. Of all safe mixtures of a net's parts (`netgraph`) the best for the bound is the one that
+the vectors strain most; so each net costs the largest of its parts, a power mean makes that smooth, and its derivatives by
+the parts are the mixture. The energy stays convex in the products v_i·v_j.
 """
 
 from __future__ import annotations
@@ -10,16 +14,19 @@ from __future__ import annotations
 import math
 from collections import deque
 from collections.abc import Callable
+from dataclasses import dataclass
+from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
 from netpart.bounds.eigenproof import StarMatrix
 from netpart.bounds.factor import Factors, factorize
+from netpart.bounds.netgraph import NetParts
 from netpart.expand import CliqueGraph
 from netpart.spectral import find_smallest
 
-__all__ = ["find_shift", "optimize_diagonal", "start_vectors", "start_weight"]
+__all__ = ["Energy", "GraphEnergy", "NetEnergy", "Vectors", "find_shift", "minimize_energy"]
 
 _RANK = 12
 _START = 3e-2
@@ -27,80 +34,138 @@ _CALLS = 250
 _MEMORY = 10
 
 
-def start_vectors(size: int) -> NDArray[np.float64]:
-    """(n, r) random vectors, always the same ones."""
-    return np.random.default_rng(0).normal(size=(size, _RANK))
+class Energy(Protocol):
+    """What is minimised: a convex function of the products v_i·v_j of unit vectors.
+
+    Called with vectors (n, r) it gives the value and half the gradient; `degrees` are the diagonal of its Laplacian, about.
+    """
+
+    degrees: NDArray[np.float64]
+
+    def __call__(self, vectors: NDArray[np.float64]) -> tuple[float, NDArray[np.float64]]: ...
 
 
-def start_weight(graph: CliqueGraph, row: NDArray[np.float64]) -> float:
-    """A small α in the right units: the penalty raises it from there."""
-    return _START * float(graph.degrees.mean()) / float(np.abs(row).sum())
+class GraphEnergy:
+    """Σ L_ij v_i·v_j of a graph."""
+
+    def __init__(self, graph: CliqueGraph) -> None:
+        self.graph = graph
+        self.degrees = graph.degrees
+
+    def __call__(self, vectors: NDArray[np.float64]) -> tuple[float, NDArray[np.float64]]:
+        """The value, and L V."""
+        image = self.degrees[:, None] * vectors - self.graph.multiply(vectors)
+        return _dot(vectors.ravel(), image.ravel()), image
 
 
-def optimize_diagonal(
-    graph: CliqueGraph,
-    row: NDArray[np.float64],
-    radius: float,
-    weight: float,
-    vectors: NDArray[np.float64],
-    max_products: int,
-) -> tuple[NDArray[np.float64], float, NDArray[np.float64]]:
-    """D and α from the low-rank semidefinite program, and its vectors; nothing about them is guaranteed.
+class NetEnergy:
+    """What the nets cost where each takes the costliest of its parts, as a power mean; `shares` are the mixture found."""
+
+    def __init__(self, parts: NetParts, power: float, degrees: NDArray[np.float64]) -> None:
+        self.parts = parts
+        self.power = power
+        self.degrees = degrees
+        self.large = GraphEnergy(parts.large_nets().widen(len(degrees)))
+        self.shares = np.zeros(parts.num_shares)
+
+    def __call__(self, vectors: NDArray[np.float64]) -> tuple[float, NDArray[np.float64]]:
+        """The value and half its gradient."""
+        value, gradient = self.large(vectors)
+        return value + self.parts.evaluate(vectors, self.power, gradient, self.shares), gradient
+
+
+@dataclass(slots=True, eq=False)
+class Vectors:
+    """The state of a search: the vectors and the multipliers that belong to them.
+
+    Attributes
+    ----------
+    units : (n, r) float64
+        Unit vectors.
+    weight : float
+        α.
+    penalty : float
+        By how much |Σ b_i v_i|² above r² raises α.
+    diagonal : (n,) float64
+        D.
+    spent : int
+        How often an energy was evaluated.
+    """
+
+    units: NDArray[np.float64]
+    weight: float
+    penalty: float
+    diagonal: NDArray[np.float64]
+    spent: int = 0
+
+    @classmethod
+    def start(cls, degrees: NDArray[np.float64], row: NDArray[np.float64], radius: float) -> Vectors:
+        """Random vectors, always the same, and a small α in the right units: the penalty raises it from there."""
+        raw = np.random.default_rng(0).normal(size=(len(row), _RANK))
+        total = float(np.abs(row).sum())
+        weight = _START * float(degrees.mean()) / total
+        penalty = 4 * weight / max(radius, 0.05 * total) ** 2
+        return cls(raw / _lengths(raw), weight, penalty, np.zeros(len(row)))
+
+    def turn(self, direction: NDArray[np.float64]) -> None:
+        """Add a dimension along which the energy falls."""
+        raw = np.column_stack([self.units, direction * (0.1 / np.max(np.abs(direction)))])
+        self.units = raw / _lengths(raw)
+
+
+def minimize_energy(
+    energy: Energy, row: NDArray[np.float64], radius: float, state: Vectors, max_calls: int, precision: float = 1e-3
+) -> None:
+    """Improve a state under |Σ b_i v_i| ≤ r; nothing about the result is guaranteed.
 
     Parameters
     ----------
-    graph : CliqueGraph
+    energy : Energy
     row : (n,) float64
         b.
     radius : float
         r.
-    weight : float
-        Where to start with α.
-    vectors : (n, r) float64
-        Where to start with the vectors, of any length but zero.
-    max_products : int
-        Products with the Laplacian to spend.
+    state : Vectors
+        Changed in place.
+    max_calls : int
+        Evaluations to spend.
+    precision : float
+        Relative distance between primal and dual value at which to stop.
     """
-    total = float(np.abs(row).sum())
-    reach = max(radius, 0.05 * total) ** 2
-    penalty = 4 * weight / reach
     # Rows of different length are a diagonal preconditioner: a step in row i is divided by its length squared.
-    lengths = np.sqrt(np.maximum(graph.degrees + 4 * weight * row**2, 1e-3 * float(graph.degrees.mean())))[:, None]
-    vectors = vectors / _lengths(vectors)
-    shape = vectors.shape
+    floor = 1e-3 * float(energy.degrees.mean())
+    lengths = np.sqrt(np.maximum(energy.degrees + 4 * state.weight * row**2, floor))[:, None]
+    shape = state.units.shape
 
     def lagrangian(flat: NDArray[np.float64]) -> tuple[float, NDArray[np.float64]]:
         raw = flat.reshape(shape)
         sizes = _lengths(raw)
         unit = raw / sizes
-        image = graph.degrees[:, None] * unit - graph.multiply(unit)
+        value, image = energy(unit)
         pull = _combine(row, unit)
-        multiplier = max(0.0, weight + penalty * (_dot(pull, pull) - radius**2))
-        value = _dot(unit.ravel(), image.ravel()) + (multiplier**2 - weight**2) / (2 * penalty)
+        multiplier = max(0.0, state.weight + state.penalty * (_dot(pull, pull) - radius**2))
+        value += (multiplier**2 - state.weight**2) / (2 * state.penalty)
         image += (multiplier * row)[:, None] * pull
         image -= unit * np.einsum("ij,ij->i", unit, image)[:, None]
         image *= 2 / sizes
         return value, image.ravel()
 
-    spent, last = 0, math.inf
-    while spent < max_products:
-        flat, calls, settled = _minimize(lagrangian, (vectors * lengths).ravel(), min(_CALLS, max_products - spent))
-        spent += calls
-        vectors = flat.reshape(shape)
-        vectors = vectors / _lengths(vectors)
-        pull = _combine(row, vectors)
+    last, limit = math.inf, state.spent + max_calls
+    while state.spent < limit:
+        flat, calls, settled = _minimize(lagrangian, (state.units * lengths).ravel(), min(_CALLS, limit - state.spent))
+        raw = flat.reshape(shape)
+        state.spent += calls
+        state.units = raw / _lengths(raw)
+        pull = _combine(row, state.units)
         excess = _dot(pull, pull) - radius**2
-        weight = max(0.0, weight + penalty * excess)
+        state.weight = max(0.0, state.weight + state.penalty * excess)
         if abs(excess) > 0.3 * last:
-            penalty *= 3
+            state.penalty *= 3
         last = abs(excess)
-        image = graph.degrees[:, None] * vectors - graph.multiply(vectors)
-        primal = _dot(vectors.ravel(), image.ravel())
-        diagonal = -np.einsum("ij,ij->i", vectors, image + (weight * row)[:, None] * pull)
-        dual = -float(diagonal.sum()) - weight * radius**2
-        if settled and abs(primal - dual) <= 1e-3 * abs(dual):
+        value, image = energy(state.units)
+        state.diagonal = -np.einsum("ij,ij->i", state.units, image + (state.weight * row)[:, None] * pull)
+        if settled and abs(state.weight * excess) <= precision * abs(value):
             break
-    return diagonal, weight, vectors
 
 
 def _minimize(

@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from netpart.bounds.bound import Bound, next_attainable
 from netpart.bounds.eigenproof import StarMatrix, verify_eigenvalue
 from netpart.bounds.factor import factorize
+from netpart.bounds.netgraph import bounding_weights
 from netpart.expand import CliqueGraph
 from netpart.netlist import Netlist, Rules, restrict
 from netpart.spectral import find_components, find_smallest
@@ -20,7 +21,6 @@ from netpart.spectral import find_components, find_smallest
 __all__ = [
     "SpectralProblem",
     "bound_from_eigenvalues",
-    "bounding_weights",
     "most_uneven_areas",
     "spectral_bound",
     "verify_spectral",
@@ -33,28 +33,6 @@ _RETREAT = 1e-7
 _TRIES = 3
 _PAIRED_SIZE = 4
 _MOST_EIGENVALUES = 8
-
-
-def bounding_weights(netlist: Netlist, num_blocks: int = 2, objective: str = "cut-nets") -> NDArray[np.float64]:
-    """(m,) weights per pair with which the graph's cut is at most the netlist's cost, for every partition into k blocks.
-
-    A net that touches j blocks costs w(e) c_j with c_j = 1, j − 1 or j by objective, and at most t_j(|e|) of its pairs are
-    cut, the edges of Turán's graph (the complete j-partite graph with parts as equal as can be). So w(e) min_j c_j/t_j(|e|)
-    over 2 ≤ j ≤ k is safe. For two blocks and cut nets it is the "bounding" weight of `expand.pair_weights`. The result
-    is rounded down far enough that sums of such weights, in any order, stay below their exact value.
-    """
-    sizes = netlist.net_sizes
-    distinct, which = np.unique(sizes, return_inverse=True)
-    ratio = np.zeros(len(distinct))
-    for i, size in enumerate(distinct.tolist()):
-        best = math.inf
-        for j in range(2, min(num_blocks, size) + 1):
-            short, long = size // j, size % j
-            pairs = (size * size - (j - long) * short**2 - long * (short + 1) ** 2) // 2
-            best = min(best, {"cut-nets": 1, "connectivity": j - 1, "terminals": j}[objective] / pairs)
-        ratio[i] = best if size >= 2 else 0.0
-    weights: NDArray[np.float64] = netlist.net_weights * ratio[which] * (1 - (netlist.num_nets + 16) * 2.0**-52)
-    return weights
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -183,6 +183,14 @@ class CliqueGraph:
             self.pairs[vertices][:, vertices].tocsr(), members[kept].tocsr(), self.clique_weights[kept]
         )
 
+    def widen(self, num_vertices: int) -> CliqueGraph:
+        """The same graph with vertices without weight at the end, up to so many in all."""
+        n, q = num_vertices, len(self.clique_weights)
+        offsets = np.append(self.pairs.indptr, np.full(n - self.num_vertices, self.pairs.nnz, self.pairs.indptr.dtype))
+        pairs = sp.csr_array((self.pairs.data, self.pairs.indices, offsets), shape=(n, n))
+        members = sp.csr_array((self.members.data, self.members.indices, self.members.indptr), shape=(q, n))
+        return CliqueGraph.from_parts(pairs, members, self.clique_weights)
+
 
 def _write_out(members: sp.csr_array, weights: NDArray[np.float64]) -> sp.csr_array:
     """Σ c (1 1ᵀ − I) over the rows of `members`, by expanding each row into its ordered pairs."""

@@ -39,7 +39,7 @@ def test_bound_is_never_above_the_optimum(
     netlist: Netlist, shape: tuple[int, tuple[int, ...] | None], tolerance: str, objective: str
 ) -> None:
     rules = Rules.from_request(shape[0], shape[1], tolerance)
-    found = diagonal_bound(netlist, rules, objective, max_products=120)
+    found = diagonal_bound(netlist, rules, objective, max_calls=120)
     optimum = enumerate_optimum(netlist, rules, objective)
     if found is not None and optimum is not None:
         assert found.bound.verified
@@ -67,7 +67,7 @@ def test_random_netlists_with_all_kinds_of_areas(batch: int) -> None:
         share = [None, (3, 2), (1, 3)][int(rng.integers(3))]
         tolerance = [Fraction(0), Fraction(1, 20), Fraction(1, 5), Fraction(3, 10)][int(rng.integers(4))]
         rules = Rules.from_request(2, share, tolerance)
-        found, optimum = diagonal_bound(netlist, rules, max_products=150), optimum_of_two(netlist, rules)
+        found, optimum = diagonal_bound(netlist, rules, max_calls=150), optimum_of_two(netlist, rules)
         if found is not None and optimum is not None:
             assert found.bound.value <= optimum * (1 + 1e-12)
             tight += found.bound.value >= 0.8 * optimum
@@ -207,6 +207,8 @@ def test_spoilt_certificates_are_refused() -> None:
         {"diagonals": heavier},
         {"diagonals": diagonals + np.nan},
         {"diagonals": diagonals[:, :-1]},
+        {"shares": arrays["shares"][:, :-1]},
+        {"shares": np.zeros_like(arrays["shares"])},
         {"resistances": -resistances},
         {"resistances": resistances * 1e6},
         {"objective": np.array([7])},
@@ -215,6 +217,13 @@ def test_spoilt_certificates_are_refused() -> None:
         with pytest.raises(CertificateError, match="diagonal certificate"):
             check_diagonal(netlist, rules, certificate)
     missing = Certificate(
-        "diagonal", {**arrays, "blocks": arrays["blocks"][:1], "diagonals": diagonals[:1], "resistances": resistances[:1]}
+        "diagonal",
+        {
+            **arrays,
+            "blocks": arrays["blocks"][:1],
+            "diagonals": diagonals[:1],
+            "resistances": resistances[:1],
+            "shares": arrays["shares"][:1],
+        },
     )
     assert check_diagonal(netlist, rules, missing)[1] <= found.bound.value

@@ -12,7 +12,8 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from netpart.bounds import spectral_bound
-from netpart.bounds.spectral import SpectralProblem, bounding_weights, most_uneven_areas, verify_spectral
+from netpart.bounds.netgraph import bounding_weights
+from netpart.bounds.spectral import SpectralProblem, most_uneven_areas, verify_spectral
 from netpart.expand import pair_weights
 from netpart.netlist import OBJECTIVES, Netlist, Rules
 from tests.expand.graphs import netlist_of
