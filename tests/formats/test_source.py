@@ -80,7 +80,9 @@ def test_damaged_archives_are_refused(tmp_path: Path, codec: str, damage: str) -
         load(path)
 
 
-@pytest.mark.parametrize("content", [b"", gzip.compress(b""), bz2.compress(b""), lzma.compress(b"")])
+@pytest.mark.parametrize(
+    "content", [b"", gzip.compress(b""), bz2.compress(b""), lzma.compress(b"")], ids=["plain", "gzip", "bzip2", "xz"]
+)
 def test_empty_files_are_refused(tmp_path: Path, content: bytes) -> None:
     path = tmp_path / "empty"
     path.write_bytes(content)
