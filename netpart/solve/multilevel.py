@@ -71,7 +71,8 @@ def solve_once(problem: Problem, index: int, rng: np.random.Generator) -> Soluti
         _refine(problem, hierarchy, last, _seed(problem, hierarchy.coarsest, index + attempt, rng), rng, boundary=False)
         for attempt in range(seeds)
     ]
-    return _descend(problem, hierarchy, tries, rng)
+    found = _descend(problem, hierarchy, tries, rng)
+    return _polish(problem, found, rng) if settings.flow_starts else found
 
 
 def improve(problem: Problem, solution: Solution, rng: np.random.Generator) -> Solution:

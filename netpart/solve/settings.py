@@ -48,8 +48,9 @@ class Settings:
     cycles: int = _knob(2, "times the pool is coarsened within its blocks and improved again", low=0, high=10_000)
     recombinations: int = _knob(24, "times two solutions of the pool are recombined", low=0, high=100_000)
     flow: bool = _knob(True, "minimum cuts through a corridor around the cut, after every cycle and recombination")
+    flow_starts: bool = _knob(False, "after every start too, before the pool is chosen")
     flow_share: float = _knob(0.2, "area of the corridor on each side, in shares of the total", low=0.001, high=0.5)
-    flow_cells: int = _knob(25_000, "cells in a corridor at most", low=10)
+    flow_cells: int = _knob(60_000, "cells in a corridor at most", low=10)
     block_tries: int = _knob(3, "attempts at more than two blocks, the best is kept", low=1, high=1000)
     block_cycles: int = _knob(2, "times more than two blocks are improved together level by level", low=0, high=1000)
     bound_work: float = _knob(100.0, "for the spreading bound: trees x pins in millions; 0 leaves it out", low=0, high=1e9)
@@ -157,6 +158,7 @@ EFFORTS: dict[str, dict[str, Any]] = {
     "normal": {},
     "thorough": {
         "starts": 80,
+        "flow_starts": True,
         "pool": 16,
         "cycles": 3,
         "recombinations": 120,
